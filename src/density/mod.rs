@@ -1,0 +1,1 @@
+//! Partial traces to one-body density matrices.

@@ -1,0 +1,1 @@
+//! Lowest levels of Hermitian operators.

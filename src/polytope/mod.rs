@@ -1,0 +1,1 @@
+//! The exclusion polytope.
