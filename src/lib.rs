@@ -12,7 +12,7 @@
 //!
 //! | floor | rooms |
 //! |---|---|
-//! | ground | [`error`], [`scalar`], [`dense`], [`linear_operator`], [`progress`], [`weights`] |
+//! | ground | [`error`], [`scalar`], [`dense`], [`linear_operator`], [`memory`], [`progress`], [`weights`] |
 //! | 1 | [`sector`]: configurations, their ranking, the lowest ones |
 //! | 2 | [`operator`]: Hamiltonians; [`polytope`]: the exclusion polytope; [`eigen`]: block eigensolver, which knows only the operator trait |
 //! | 3 | [`density`]: partial traces to one-body density matrices |
@@ -23,6 +23,7 @@ pub mod density;
 pub mod eigen;
 pub mod error;
 pub mod linear_operator;
+pub mod memory;
 pub mod operator;
 pub mod polytope;
 pub mod progress;

@@ -1,1 +1,23 @@
 //! Interactions and Hamiltonians.
+//!
+//! [`Interaction`] holds what the caller gave, validated; [`ModeTerms`] brings it to normal
+//! order for one kind of particles; products are done by a stored matrix or row by row for
+//! spinless particles, and through the product structure for spin-1/2.
+
+mod coupling;
+mod hamiltonian;
+mod hops;
+mod interaction;
+mod modes;
+mod spin_half;
+mod stored;
+mod symmetry;
+mod terms;
+mod walker;
+
+pub use hamiltonian::{Hamiltonian, MemoryEstimate};
+pub use hops::{Hop, HopTable};
+pub use interaction::{Entry, Interaction};
+pub use stored::SparseMatrix;
+pub use symmetry::TensorOrder;
+pub use walker::{ModeSpace, Walker};

@@ -1,0 +1,412 @@
+//! Spin-1/2 fermions at fixed (up, down): H = H_up x 1 + 1 x H_down + coupling.
+//!
+//! A vector is a matrix with a row for each up configuration. The down part and the
+//! density-density coupling work on a few rows at a time, transposed so that neighbouring
+//! numbers belong to different rows; the up part works on strips of columns that stay in cache.
+
+use super::coupling::HopCoupling;
+use super::interaction::Interaction;
+use super::modes::ModeOperator;
+use super::stored::{RowSink, SparseMatrix};
+use super::terms::ModeTerms;
+use super::walker::ModeSpace;
+use crate::dense::{Conjugate, Threads, multiply};
+use crate::error::Result;
+use crate::memory;
+use crate::scalar::Scalar;
+use ndarray::{Array1, Array2, ArrayView2, ArrayView3, ArrayViewMut2, ArrayViewMut3, Axis};
+use rayon::prelude::*;
+use std::ops::Range;
+
+/// Rows of a tile: two vector registers of eight numbers.
+const TILE: usize = 16;
+/// Bytes of a column strip, within the second-level cache of common processors.
+const STRIP_BYTES: usize = 1 << 19;
+/// Above this fraction of non-zero elements a one-spin matrix is multiplied as a dense one,
+const DENSE_FILL: f64 = 0.1;
+/// unless it has more rows than this.
+const DENSE_ROWS: usize = 4096;
+
+/// H on the product of up and down configurations.
+#[derive(Debug, Clone)]
+pub struct SpinHalfOperator<T> {
+    up: StringMatrix<T>,
+    down: StringMatrix<T>,
+    density: Option<DensityCoupling>,
+    hops: Option<HopCoupling<T>>,
+}
+
+/// The part of H that acts on one spin.
+#[derive(Debug, Clone)]
+struct StringMatrix<T> {
+    sparse: SparseMatrix<T>,
+    /// The same matrix, where a dense product is faster.
+    dense: Option<Array2<T>>,
+}
+
+/// sum_pq V_pq n(up)_p n(down)_q.
+#[derive(Debug, Clone)]
+struct DensityCoupling {
+    matrix: Array2<f64>,
+    up: Occupied,
+    down: Occupied,
+}
+
+/// Occupied modes of every configuration.
+#[derive(Debug, Clone)]
+struct Occupied {
+    particles: usize,
+    modes: Vec<u32>,
+}
+
+impl Occupied {
+    fn new(space: &ModeSpace) -> Result<Self> {
+        let mut modes = Vec::with_capacity(space.dimension() * space.particles());
+        let mut walker = space.walker(0)?;
+        for _ in 0..space.dimension() {
+            modes.extend_from_slice(walker.modes());
+            walker.advance();
+        }
+        Ok(Occupied {
+            particles: space.particles(),
+            modes,
+        })
+    }
+
+    #[inline]
+    fn of(&self, configuration: usize) -> &[u32] {
+        &self.modes[configuration * self.particles..(configuration + 1) * self.particles]
+    }
+}
+
+impl DensityCoupling {
+    #[inline]
+    fn element(&self, up: usize, down: usize) -> f64 {
+        let down = self.down.of(down);
+        let row = |p: u32| self.matrix.row(p as usize);
+        self.up
+            .of(up)
+            .iter()
+            .map(|&p| down.iter().map(|&q| row(p)[q as usize]).sum::<f64>())
+            .sum()
+    }
+
+    /// What a down particle in each mode feels from the up configurations of a tile.
+    fn potentials(&self, first: usize, rows: usize) -> Vec<[f64; TILE]> {
+        let mut potentials = vec![[0.0; TILE]; self.matrix.nrows()];
+        for offset in 0..rows {
+            for &p in self.up.of(first + offset) {
+                for (potential, &v) in potentials.iter_mut().zip(self.matrix.row(p as usize)) {
+                    potential[offset] += v;
+                }
+            }
+        }
+        potentials
+    }
+}
+
+impl<T: Scalar> StringMatrix<T> {
+    fn new(operator: &ModeOperator<T>) -> Result<Self> {
+        let element = (size_of::<T>() + size_of::<u32>()) as u128;
+        memory::require(
+            "the part of the Hamiltonian that acts on one spin",
+            operator.estimated_elements()? * element,
+        )?;
+        let sparse = operator.to_sparse();
+        let n = sparse.rows();
+        let worthwhile = n > 1 && n <= DENSE_ROWS && sparse.fill() > DENSE_FILL;
+        let dense = worthwhile.then(|| {
+            let mut dense = Array2::zeros((n, n));
+            for i in 0..n {
+                let (columns, values) = sparse.row(i);
+                for (&j, &value) in columns.iter().zip(values) {
+                    dense[[i, j as usize]] = value;
+                }
+            }
+            dense
+        });
+        Ok(StringMatrix { sparse, dense })
+    }
+}
+
+impl<T: Scalar> SpinHalfOperator<T> {
+    /// Prepares the parts from h `(2, d, d)` and the interaction.
+    ///
+    /// # Errors
+    /// [`crate::error::Error::Memory`] if the tables do not fit.
+    pub fn new(
+        one_body: ArrayView3<'_, T>,
+        interaction: Option<&Interaction<T>>,
+        spaces: [ModeSpace; 2],
+    ) -> Result<Self> {
+        let [up, down] = spaces;
+        let part = |spin: usize, space: &ModeSpace| {
+            let terms = ModeTerms::new(one_body.index_axis(Axis(0), spin), interaction, true);
+            StringMatrix::new(&ModeOperator::new(space.clone(), terms))
+        };
+        let density = match interaction.and_then(Interaction::density_density) {
+            Some(matrix) => Some(DensityCoupling {
+                matrix: matrix.clone(),
+                up: Occupied::new(&up)?,
+                down: Occupied::new(&down)?,
+            }),
+            None => None,
+        };
+        let needs_hops = |w: &&Interaction<T>| w.tensor().is_some() || w.has_entries();
+        let hops = match interaction.filter(needs_hops) {
+            Some(interaction) => {
+                memory::require("the hop tables", HopCoupling::<T>::bytes(&up, &down))?;
+                Some(HopCoupling::new(interaction, &up, &down)?)
+            }
+            None => None,
+        };
+        Ok(SpinHalfOperator {
+            up: part(0, &up)?,
+            down: part(1, &down)?,
+            density,
+            hops,
+        })
+    }
+
+    fn shape(&self) -> (usize, usize) {
+        (self.up.sparse.rows(), self.down.sparse.rows())
+    }
+
+    /// Overwrites row k of `out` with the product with row k of `block`.
+    pub fn apply(&self, block: ArrayView2<'_, T>, mut out: ArrayViewMut2<'_, T>) {
+        match &self.down.dense {
+            None => self.apply_tiles(block, out.view_mut(), Some(&self.down.sparse)),
+            Some(_) => self.apply_tiles(block, out.view_mut(), None),
+        }
+        let (up, down) = self.shape();
+        let shape = (block.nrows(), up, down);
+        if let (Ok(block), Ok(out)) = (
+            block.into_shape_with_order(shape),
+            out.view_mut().into_shape_with_order(shape),
+        ) {
+            self.add_dense_down(block, out);
+        }
+        if let (Ok(block), Ok(out)) = (
+            block.into_shape_with_order(shape),
+            out.view_mut().into_shape_with_order(shape),
+        ) {
+            self.add_up(block, out);
+        }
+        if let Some(hops) = &self.hops {
+            hops.add_to(block, out, down);
+        }
+    }
+
+    /// The sparse down part (if given) and the density coupling, a tile of rows at a time.
+    fn apply_tiles(
+        &self,
+        block: ArrayView2<'_, T>,
+        mut out: ArrayViewMut2<'_, T>,
+        down: Option<&SparseMatrix<T>>,
+    ) {
+        let width = self.down.sparse.rows();
+        let arch = pulp::Arch::new();
+        out.axis_chunks_iter_mut(Axis(1), TILE * width)
+            .into_par_iter()
+            .enumerate()
+            .for_each_init(
+                || {
+                    (
+                        vec![[T::zero(); TILE]; width],
+                        vec![[T::zero(); TILE]; width],
+                    )
+                },
+                |(source, target), (tile, mut part)| {
+                    let first = tile * TILE;
+                    let rows = part.ncols() / width;
+                    let potentials = self.density.as_ref().map(|c| c.potentials(first, rows));
+                    for (vector, mut result) in block.rows().into_iter().zip(part.rows_mut()) {
+                        let columns = first * width..(first + rows) * width;
+                        let input = vector.slice_move(ndarray::s![columns]);
+                        let (Some(input), Some(result)) = (input.as_slice(), result.as_slice_mut())
+                        else {
+                            continue;
+                        };
+                        arch.dispatch(|| {
+                            transpose_in(input, source);
+                            self.fill_tile(down, potentials.as_deref(), source, target);
+                            transpose_out(target, result);
+                        });
+                    }
+                },
+            );
+    }
+
+    /// One transposed tile: target = (down part + density coupling) source.
+    #[inline(always)]
+    fn fill_tile(
+        &self,
+        down: Option<&SparseMatrix<T>>,
+        potentials: Option<&[[f64; TILE]]>,
+        source: &[[T; TILE]],
+        target: &mut [[T; TILE]],
+    ) {
+        for (i, target) in target.iter_mut().enumerate() {
+            let mut sum = [T::zero(); TILE];
+            if let (Some(coupling), Some(potentials)) = (&self.density, potentials) {
+                let mut potential = [0.0; TILE];
+                for &q in coupling.down.of(i) {
+                    for (total, v) in potential.iter_mut().zip(&potentials[q as usize]) {
+                        *total += v;
+                    }
+                }
+                for k in 0..TILE {
+                    sum[k] = source[i][k] * potential[k];
+                }
+            }
+            if let Some(matrix) = down {
+                let (columns, values) = matrix.row(i);
+                for (&j, &value) in columns.iter().zip(values) {
+                    for (total, &x) in sum.iter_mut().zip(&source[j as usize]) {
+                        *total += value * x;
+                    }
+                }
+            }
+            *target = sum;
+        }
+    }
+
+    fn add_dense_down(&self, block: ArrayView3<'_, T>, mut out: ArrayViewMut3<'_, T>) {
+        let Some(dense) = &self.down.dense else {
+            return;
+        };
+        for (vector, result) in block.outer_iter().zip(out.outer_iter_mut()) {
+            multiply(
+                T::one(),
+                (vector, Conjugate::No),
+                (dense.t(), Conjugate::No),
+                T::one(),
+                result,
+                Threads::All,
+            );
+        }
+    }
+
+    fn add_up(&self, block: ArrayView3<'_, T>, mut out: ArrayViewMut3<'_, T>) {
+        if let Some(dense) = &self.up.dense {
+            for (vector, result) in block.outer_iter().zip(out.outer_iter_mut()) {
+                multiply(
+                    T::one(),
+                    (dense.view(), Conjugate::No),
+                    (vector, Conjugate::No),
+                    T::one(),
+                    result,
+                    Threads::All,
+                );
+            }
+            return;
+        }
+        let (up, down) = self.shape();
+        let width = (STRIP_BYTES / (up * size_of::<T>())).next_multiple_of(8);
+        let width = width
+            .min(down.div_ceil(rayon::current_num_threads()))
+            .max(1);
+        let arch = pulp::Arch::new();
+        out.axis_chunks_iter_mut(Axis(2), width)
+            .into_par_iter()
+            .enumerate()
+            .for_each(|(strip, mut part)| {
+                let first = strip * width;
+                let columns = first..first + part.len_of(Axis(2));
+                for (vector, mut result) in block.outer_iter().zip(part.outer_iter_mut()) {
+                    arch.dispatch(|| self.add_up_strip(&vector, &mut result, columns.clone()));
+                }
+            });
+    }
+
+    #[inline(always)]
+    fn add_up_strip(
+        &self,
+        vector: &ArrayView2<'_, T>,
+        result: &mut ArrayViewMut2<'_, T>,
+        columns: Range<usize>,
+    ) {
+        for (i, mut target) in result.rows_mut().into_iter().enumerate() {
+            let Some(target) = target.as_slice_mut() else {
+                continue;
+            };
+            let (sources, values) = self.up.sparse.row(i);
+            for (&j, &value) in sources.iter().zip(values) {
+                let row = vector.row(j as usize);
+                let Some(source) = row.as_slice() else {
+                    continue;
+                };
+                for (t, &x) in target.iter_mut().zip(&source[columns.clone()]) {
+                    *t += value * x;
+                }
+            }
+        }
+    }
+
+    /// Pushes the rows of a range.
+    pub fn fill_rows(&self, rows: Range<usize>, sink: &mut RowSink<T>) {
+        let width = self.down.sparse.rows();
+        let mut elements = Vec::new();
+        for row in rows {
+            let (up, down) = (row / width, row % width);
+            let mut push = |i: usize, j: usize, value: T| {
+                elements.push(((i * width + j) as u32, value));
+            };
+            let (columns, values) = self.up.sparse.row(up);
+            for (&i, &value) in columns.iter().zip(values) {
+                push(i as usize, down, value);
+            }
+            let (columns, values) = self.down.sparse.row(down);
+            for (&j, &value) in columns.iter().zip(values) {
+                push(up, j as usize, value);
+            }
+            if let Some(coupling) = &self.density {
+                push(up, down, T::from_real(coupling.element(up, down)));
+            }
+            if let Some(hops) = &self.hops {
+                hops.visit_row(up, down, push);
+            }
+            sink.push_row(&mut elements);
+        }
+    }
+
+    /// Diagonal matrix elements.
+    pub fn diagonal(&self) -> Array1<f64> {
+        let (up, down) = self.shape();
+        let (of_up, of_down) = (self.up.sparse.diagonal(), self.down.sparse.diagonal());
+        let element = |index: usize| {
+            let (i, j) = (index / down, index % down);
+            let density = self.density.as_ref().map_or(0.0, |c| c.element(i, j));
+            let mut sum = of_up[i] + of_down[j] + density;
+            if let Some(hops) = &self.hops {
+                sum += hops.diagonal(i, j);
+            }
+            sum
+        };
+        (0..up * down)
+            .into_par_iter()
+            .map(element)
+            .collect::<Vec<_>>()
+            .into()
+    }
+}
+
+#[inline(always)]
+fn transpose_in<T: Scalar>(rows: &[T], columns: &mut [[T; TILE]]) {
+    let width = columns.len();
+    for (offset, row) in rows.chunks_exact(width).enumerate() {
+        for (column, &x) in columns.iter_mut().zip(row) {
+            column[offset] = x;
+        }
+    }
+}
+
+#[inline(always)]
+fn transpose_out<T: Scalar>(columns: &[[T; TILE]], rows: &mut [T]) {
+    let width = columns.len();
+    for (offset, row) in rows.chunks_exact_mut(width).enumerate() {
+        for (x, column) in row.iter_mut().zip(columns) {
+            *x = column[offset];
+        }
+    }
+}
