@@ -1,1 +1,165 @@
-//! Lowest levels of Hermitian operators.
+//! Lowest levels of Hermitian operators, certified.
+//!
+//! [`lowest_levels`] knows only [`LinearOperator`]. Small problems go to LAPACK; large ones to a
+//! block Lanczos iteration with thick restarts, followed by a search for missed levels in the
+//! orthogonal complement of what was found.
+
+mod dense;
+mod lanczos;
+mod multiplet;
+mod orthogonal;
+mod probe;
+mod search;
+
+use crate::error::{Error, Result};
+use crate::linear_operator::LinearOperator;
+use crate::progress::Monitor;
+use crate::scalar::Scalar;
+use ndarray::{Array1, Array2, ArrayView2};
+use std::ops::Range;
+
+/// What [`lowest_levels`] is asked for.
+#[derive(Debug, Clone)]
+pub struct LevelRequest<'a, T> {
+    /// Number of levels wanted, r >= 1.
+    pub levels: usize,
+    /// A level counts as converged when its residual norm |H x - E x| is at most this times
+    /// max(1, largest |E| of the levels found), or at rounding level of the operator's norm.
+    /// Levels closer than twice that are one multiplet.
+    pub tolerance: f64,
+    /// Rows to start from, `(k, dimension)`; random rows are always added.
+    pub start: Option<ArrayView2<'a, T>>,
+    /// Seed of all random numbers.
+    pub seed: u64,
+    /// The iteration stops as not converged before it exceeds this number of products (but the
+    /// first block is always multiplied).
+    pub max_products: usize,
+    /// Bytes for the basis; 0 stands for what the iteration likes (about 24 vectors for a few
+    /// levels, 2r + 10 for many).
+    pub memory_limit: usize,
+    /// Dimension up to which a dense matrix is diagonalised.
+    pub dense_limit: usize,
+}
+
+impl<T> LevelRequest<'_, T> {
+    /// The usual settings for `levels` levels.
+    pub fn new(levels: usize) -> Self {
+        LevelRequest {
+            levels,
+            tolerance: 1e-10,
+            start: None,
+            seed: 0,
+            max_products: usize::MAX,
+            memory_limit: 0,
+            dense_limit: 400,
+        }
+    }
+}
+
+/// How sure it is that no level below those found is missing.
+#[derive(Debug, Clone, Copy, PartialEq)]
+pub enum LevelCount {
+    /// The whole space was diagonalised.
+    Proved,
+    /// A search from a random start in the orthogonal complement found nothing.
+    Probed {
+        /// Bound on the probability that this search overlooks a missed level.
+        failure_probability: f64,
+    },
+    /// Nothing is known.
+    Unchecked,
+}
+
+/// How the work ended.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+pub enum Status {
+    /// All levels reached the tolerance.
+    Converged,
+    /// The allowed products were used up, or rounding forbids the tolerance.
+    NotConverged,
+    /// The monitor, or the operator, stopped the work.
+    Interrupted,
+}
+
+/// The lowest levels, or the best approximations to them if `status` is not converged.
+#[derive(Debug, Clone)]
+pub struct Levels<T> {
+    /// Increasing: those wanted, then those that complete the last multiplet.
+    pub energies: Array1<f64>,
+    /// One row a level, orthonormal; the first component within 1e-8 of the largest is real and
+    /// positive.
+    pub vectors: Array2<T>,
+    /// Residual norms |H x - E x|.
+    pub residuals: Array1<f64>,
+    /// Bounds on the distance of each energy to the operator's spectrum: the residual norm, or
+    /// the Kato-Temple bound (squared residuals over the gap) where it is smaller and the level
+    /// count was checked; plus a rounding term.
+    pub error_bounds: Array1<f64>,
+    /// The first level above the last multiplet; none if there is none or it was not found.
+    pub next_energy: Option<f64>,
+    /// Its residual norm, which bounds its error; looked-ahead levels are less converged.
+    pub next_error: Option<f64>,
+    /// Ranges of levels that are equal within tolerance.
+    pub multiplets: Vec<Range<usize>>,
+    /// Whether the last multiplet is known to end with the last level.
+    pub last_multiplet_complete: bool,
+    /// How sure it is that no level is missing.
+    pub level_count: LevelCount,
+    /// How the work ended.
+    pub status: Status,
+    /// Products of the operator with a vector.
+    pub products: usize,
+    /// "dense" or "block Lanczos".
+    pub method: &'static str,
+}
+
+/// The lowest levels of a Hermitian operator.
+///
+/// Levels beyond those wanted are added until the last multiplet is complete (at most
+/// max(16, r) when iterating), and one more is looked at. The monitor is called from the
+/// calling thread once a block step. Not converging and being interrupted are a status.
+///
+/// # Errors
+/// [`Error::Argument`] for a request that makes no sense, [`Error::Memory`] if the basis does
+/// not fit, [`Error::Lapack`].
+pub fn lowest_levels<T: Scalar>(
+    operator: &dyn LinearOperator<T>,
+    request: &LevelRequest<'_, T>,
+    monitor: &mut Monitor<'_>,
+) -> Result<Levels<T>> {
+    validate(operator.dimension(), request)?;
+    if dense::suits(operator.dimension(), request) {
+        dense::lowest_levels(operator, request, monitor)
+    } else {
+        search::lowest_levels(operator, request, monitor)
+    }
+}
+
+fn validate<T: Scalar>(dimension: usize, request: &LevelRequest<'_, T>) -> Result<()> {
+    if request.levels == 0 || request.levels > dimension {
+        let expected = format!("between 1 and the dimension, {dimension}");
+        return Err(Error::argument("levels", request.levels, expected));
+    }
+    if !(request.tolerance.is_finite() && request.tolerance > 0.0) {
+        let expected = "a positive number, such as 1e-10";
+        return Err(Error::argument("tolerance", request.tolerance, expected));
+    }
+    if let Some(start) = &request.start {
+        if start.ncols() != dimension {
+            let expected = format!("rows of length {dimension}, the dimension");
+            let given = format!("an array of shape {:?}", start.dim());
+            return Err(Error::argument("start", given, expected));
+        }
+        if start.iter().any(|x| !x.is_finite()) {
+            return Err(Error::argument(
+                "start",
+                "NaN or infinity",
+                "finite numbers",
+            ));
+        }
+    }
+    Ok(())
+}
+
+#[cfg(test)]
+mod tests;

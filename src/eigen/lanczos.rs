@@ -1,0 +1,276 @@
+//! Block Lanczos with thick restarts (Wu and Simon, SIAM J. Matrix Anal. Appl. 22, 602 (2000);
+//! recalled), in the orthogonal complement of locked vectors.
+//!
+//! With V the basis, T = <V, H V> and Q the residual block, H V = V T + Q B on the last block.
+//! The residual norm of the Ritz vector V y is then |B y_last|, without touching vectors.
+
+use super::orthogonal::{Purge, fill_random, orthonormalize, rotate};
+use crate::dense::eigh;
+use crate::error::{Error, Result};
+use crate::linear_operator::LinearOperator;
+use crate::scalar::Scalar;
+use ndarray::{Array2, ArrayView2, ArrayViewMut2, s};
+use rand::SeedableRng;
+use rand_chacha::ChaCha8Rng;
+
+/// Ritz pairs of the basis as it stands: levels, coefficients in columns, residual norms.
+#[derive(Clone)]
+pub(super) struct Ritz<T> {
+    pub values: Vec<f64>,
+    pub coefficients: Array2<T>,
+    pub residuals: Vec<f64>,
+}
+
+impl<T: Scalar> Ritz<T> {
+    fn empty() -> Self {
+        Ritz {
+            values: Vec::new(),
+            coefficients: Array2::zeros((0, 0)),
+            residuals: Vec::new(),
+        }
+    }
+}
+
+/// The basis and its projected problem. Rows in memory: locked, Krylov, residual block.
+pub(super) struct BlockLanczos<'a, T: Scalar> {
+    operator: &'a dyn LinearOperator<T>,
+    dimension: usize,
+    storage: Vec<T>,
+    /// Vectors left alone at the front.
+    pub locked: usize,
+    /// Krylov rows, the active block (the last `active` of them) included.
+    pub size: usize,
+    active: usize,
+    /// First Krylov row that the next images overlap with.
+    first_coupled: usize,
+    projected: Array2<T>,
+    /// B, one row for each row of the residual block.
+    coupling: Array2<T>,
+    /// The latest Ritz pairs.
+    pub ritz: Ritz<T>,
+    /// Estimate from below of the norm of the operator.
+    pub scale: f64,
+    /// Products with the operator so far.
+    pub products: usize,
+    generator: ChaCha8Rng,
+}
+
+impl<'a, T: Scalar> BlockLanczos<'a, T> {
+    /// Nothing in memory yet; `rows` is the number of rows to reserve.
+    ///
+    /// # Errors
+    /// [`Error::Memory`] if the reservation fails.
+    pub fn new(operator: &'a dyn LinearOperator<T>, rows: usize, seed: u64) -> Result<Self> {
+        let dimension = operator.dimension();
+        let mut storage = Vec::new();
+        let length = rows.saturating_mul(dimension);
+        storage
+            .try_reserve_exact(length)
+            .map_err(|_| Error::Memory {
+                what: format!("a basis of {rows} vectors"),
+                required: length as u128 * size_of::<T>() as u128,
+                available: 0,
+            })?;
+        Ok(BlockLanczos {
+            operator,
+            dimension,
+            storage,
+            locked: 0,
+            size: 0,
+            active: 0,
+            first_coupled: 0,
+            projected: Array2::zeros((0, 0)),
+            coupling: Array2::zeros((0, 0)),
+            ritz: Ritz::empty(),
+            scale: 0.0,
+            products: 0,
+            generator: ChaCha8Rng::seed_from_u64(seed),
+        })
+    }
+
+    /// Rows of the basis, locked and Krylov ones.
+    pub fn rows(&self) -> usize {
+        self.locked + self.size
+    }
+
+    /// Rows in the residual block.
+    pub fn residual_width(&self) -> usize {
+        self.coupling.nrows()
+    }
+
+    /// Whether locked and Krylov vectors span the whole space.
+    pub fn exhausted(&self) -> bool {
+        self.rows() == self.dimension
+    }
+
+    /// The first `rows` rows, and the `extra` ones after them for writing.
+    pub fn split(
+        &mut self,
+        rows: usize,
+        extra: usize,
+    ) -> (ArrayView2<'_, T>, ArrayViewMut2<'_, T>) {
+        let (n, total) = (self.dimension, rows + extra);
+        if self.storage.len() < total * n {
+            self.storage.resize(total * n, T::zero());
+        }
+        let (head, tail) = self.storage.split_at_mut(rows * n);
+        let head = ArrayView2::from_shape((rows, n), head).expect("whole rows");
+        let tail = &mut tail[..extra * n];
+        let tail = ArrayViewMut2::from_shape((extra, n), tail).expect("whole rows");
+        (head, tail)
+    }
+
+    /// Begins anew in the complement of the first `locked` rows, with `width` rows: those of
+    /// `start`, then random ones from `generator`.
+    pub fn begin(
+        &mut self,
+        locked: usize,
+        width: usize,
+        start: ArrayView2<'_, T>,
+        mut generator: ChaCha8Rng,
+    ) -> Result<()> {
+        let given = start.nrows().min(width);
+        let (basis, mut block) = self.split(locked, width);
+        for (k, mut row) in block.rows_mut().into_iter().enumerate() {
+            if k < given {
+                row.assign(&start.row(k));
+                let norm = row.iter().map(|x| x.abs_sqr()).sum::<f64>().sqrt();
+                if norm > 0.0 {
+                    row.mapv_inplace(|x| x * (1.0 / norm));
+                }
+            } else {
+                fill_random(row, &mut generator);
+            }
+        }
+        let purge = Purge {
+            first_expected: 0,
+            noise: 1e-10,
+        };
+        let split = orthonormalize(basis, block, &purge, &mut generator)?;
+        self.locked = locked;
+        self.size = split.outside.nrows();
+        self.active = self.size;
+        self.first_coupled = 0;
+        self.projected = Array2::zeros((0, 0));
+        self.coupling = Array2::zeros((0, self.active));
+        self.ritz = Ritz::empty();
+        Ok(())
+    }
+
+    /// Applies the operator to the active block and brings the Ritz pairs up to date.
+    ///
+    /// # Errors
+    /// What the operator returns; the Ritz pairs are then still those of before.
+    pub fn step(&mut self) -> Result<()> {
+        let (rows, active, locked) = (self.rows(), self.active, self.locked);
+        let operator = self.operator;
+        let (basis, mut image) = self.split(rows, active);
+        operator.apply(basis.slice(s![rows - active.., ..]), image.view_mut())?;
+        self.products += active;
+        let purge = Purge {
+            first_expected: if locked > 0 { 0 } else { self.first_coupled },
+            noise: 16.0 * f64::EPSILON * self.scale,
+        };
+        let mut generator = self.generator.clone();
+        let (basis, image) = self.split(rows, active);
+        let split = orthonormalize(basis, image, &purge, &mut generator)?;
+        self.generator = generator;
+        self.project(&split.inside.slice(s![locked.., ..]).to_owned());
+        self.coupling = split.outside;
+        self.update_ritz()
+    }
+
+    /// Enters the coefficients of the active block into the projected matrix.
+    fn project(&mut self, inside: &Array2<T>) {
+        let (size, done) = (self.size, self.size - self.active);
+        let mut projected = Array2::zeros((size, size));
+        projected
+            .slice_mut(s![..done, ..done])
+            .assign(&self.projected);
+        for ((i, a), &value) in inside.indexed_iter() {
+            let j = done + a;
+            if i < done {
+                projected[[i, j]] = value;
+                projected[[j, i]] = value.conj();
+            } else {
+                projected[[i, j]] += value * 0.5;
+                projected[[j, i]] += value.conj() * 0.5;
+            }
+        }
+        self.projected = projected;
+    }
+
+    fn update_ritz(&mut self) -> Result<()> {
+        let eigen = eigh(self.projected.view())?;
+        let last = eigen.vectors.slice(s![self.size - self.active.., ..]);
+        let residuals = self.coupling.dot(&last);
+        let norm = |column: ndarray::ArrayView1<'_, T>| {
+            column.iter().map(|x| x.abs_sqr()).sum::<f64>().sqrt()
+        };
+        let extreme = eigen
+            .values
+            .iter()
+            .fold(0.0, |top: f64, v| top.max(v.abs()));
+        self.scale = self.scale.max(extreme);
+        self.ritz = Ritz {
+            values: eigen.values.to_vec(),
+            residuals: residuals.columns().into_iter().map(norm).collect(),
+            coefficients: eigen.vectors,
+        };
+        Ok(())
+    }
+
+    /// Makes the residual block the active one.
+    pub fn extend(&mut self) {
+        self.first_coupled = self.size - self.active;
+        self.active = self.residual_width();
+        self.size += self.active;
+    }
+
+    /// Keeps the `keep` lowest Ritz vectors and makes the residual block the active one.
+    pub fn restart(&mut self, keep: usize) {
+        let (locked, size, n) = (self.locked, self.size, self.dimension);
+        let chosen = self.ritz.coefficients.slice(s![.., ..keep]).to_owned();
+        let (_, krylov) = self.split(locked, size);
+        rotate(krylov, chosen.view());
+        let (from, width) = ((locked + size) * n, self.residual_width());
+        self.storage
+            .copy_within(from..from + width * n, (locked + keep) * n);
+        self.ritz.values.truncate(keep);
+        self.ritz.residuals.truncate(keep);
+        let levels = self.ritz.values.iter().map(|&value| T::from_real(value));
+        self.projected = Array2::from_diag(&levels.collect::<ndarray::Array1<T>>());
+        self.ritz.coefficients = Array2::eye(keep);
+        self.first_coupled = 0;
+        self.active = width;
+        self.size = keep + width;
+    }
+
+    /// Replaces all rows by combinations of locked rows and Ritz vectors, given by their number
+    /// (locked first); they become the first rows and nothing is active.
+    pub fn collect(&mut self, chosen: &[usize]) {
+        let (locked, found) = (self.locked, self.ritz.coefficients.nrows());
+        let mut coefficients = Array2::zeros((locked + found, chosen.len()));
+        for (column, &origin) in chosen.iter().enumerate() {
+            if origin < locked {
+                coefficients[[origin, column]] = T::one();
+            } else {
+                let vector = self.ritz.coefficients.column(origin - locked);
+                coefficients.slice_mut(s![locked.., column]).assign(&vector);
+            }
+        }
+        let (_, rows) = self.split(0, locked + found);
+        rotate(rows, coefficients.view());
+        self.locked = chosen.len();
+        self.size = 0;
+        self.active = 0;
+        self.ritz = Ritz::empty();
+    }
+
+    /// The first `rows` rows as an array, without copying.
+    pub fn into_rows(mut self, rows: usize) -> Array2<T> {
+        self.storage.resize(rows * self.dimension, T::zero());
+        self.storage.shrink_to_fit();
+        Array2::from_shape_vec((rows, self.dimension), self.storage).expect("whole rows")
+    }
+}

@@ -1,0 +1,295 @@
+//! Block Gram-Schmidt on row-major blocks, in sweeps over column chunks.
+//!
+//! Out of cache these kernels are bound by memory, so each sweep reads the basis once and does
+//! all it can with a chunk while that lies in cache. Partial sums are added in the order of the
+//! chunks: results do not depend on the number of threads.
+//!
+//! A basis is a `(rows, n)` array V with orthonormal rows, a block a `(p, n)` array W; their
+//! overlaps are the `(rows, p)` matrix <v_i, w_a>.
+
+use crate::dense::{Conjugate, Threads, eigh, multiply};
+use crate::error::{Error, Result};
+use crate::scalar::Scalar;
+use ndarray::parallel::prelude::*;
+use ndarray::{Array2, ArrayView2, ArrayViewMut1, ArrayViewMut2, Axis, s};
+use rand::Rng;
+
+/// Columns handled at once: two dozen rows of them fit in a second-level cache.
+const CHUNK: usize = 4096;
+/// Largest overlap with the basis, and deviation of a Gram matrix from one, that passes.
+const ORTHOGONALITY: f64 = 1e-12;
+/// Ratio of Gram eigenvalues beyond which overlaps are measured anew, not predicted.
+const WELL_CONDITIONED: f64 = 1e-6;
+/// Sweeps after which a block is taken as it is.
+const MOST_SWEEPS: usize = 8;
+
+/// What one sweep measures on the block it leaves behind.
+struct Measured<T> {
+    overlaps: Array2<T>,
+    gram: Array2<T>,
+}
+
+/// W = C^T V + B^T Q: a block split into its part inside the basis and new orthonormal rows Q.
+pub(super) struct Split<T> {
+    /// C, `(rows of V, rows of W)`.
+    pub inside: Array2<T>,
+    /// B, `(rows of Q, rows of W)`; the rows of random replacements are zero.
+    pub outside: Array2<T>,
+}
+
+fn conjugate_product<T: Scalar>(left: ArrayView2<'_, T>, right: ArrayView2<'_, T>) -> Array2<T> {
+    let mut out = Array2::zeros((left.nrows(), right.nrows()));
+    if !out.is_empty() {
+        multiply(
+            T::one(),
+            (left, Conjugate::Yes),
+            (right.t(), Conjugate::No),
+            T::zero(),
+            out.view_mut(),
+            Threads::One,
+        );
+    }
+    out
+}
+
+/// The overlaps <v_i, w_a>.
+pub(super) fn overlaps<T: Scalar>(basis: ArrayView2<'_, T>, block: ArrayView2<'_, T>) -> Array2<T> {
+    let partial: Vec<Array2<T>> = chunks(basis)
+        .zip(chunks(block))
+        .map(|(v, w)| conjugate_product(v, w))
+        .collect();
+    sum(partial, (basis.nrows(), block.nrows()))
+}
+
+fn chunks<T: Scalar>(
+    matrix: ArrayView2<'_, T>,
+) -> impl IndexedParallelIterator<Item = ArrayView2<'_, T>> {
+    let count = matrix.ncols().div_ceil(CHUNK);
+    (0..count).into_par_iter().map(move |k| {
+        let end = ((k + 1) * CHUNK).min(matrix.ncols());
+        matrix.slice_move(s![.., k * CHUNK..end])
+    })
+}
+
+fn sum<T: Scalar>(partial: Vec<Array2<T>>, shape: (usize, usize)) -> Array2<T> {
+    partial
+        .into_iter()
+        .fold(Array2::zeros(shape), |total, part| total + part)
+}
+
+/// Product of small matrices, on the calling thread, into `out`.
+fn multiply_into<T: Scalar>(
+    factor: T,
+    left: ArrayView2<'_, T>,
+    right: ArrayView2<'_, T>,
+    keep: T,
+    out: ArrayViewMut2<'_, T>,
+) {
+    if out.is_empty() || right.is_empty() {
+        return;
+    }
+    let (left, right) = ((left, Conjugate::No), (right, Conjugate::No));
+    multiply(factor, left, right, keep, out, Threads::One);
+}
+
+/// W <- M W - D^T V, with D given for the last rows of V only; measures what comes out.
+///
+/// M may have fewer rows than W: the rows of W beyond are left without meaning.
+fn sweep<T: Scalar>(
+    basis: ArrayView2<'_, T>,
+    mut block: ArrayViewMut2<'_, T>,
+    transform: Option<&Array2<T>>,
+    subtract: Option<&Array2<T>>,
+    measure_overlaps: bool,
+) -> Measured<T> {
+    let width = transform.map_or(block.nrows(), Array2::nrows);
+    let rows = if measure_overlaps { basis.nrows() } else { 0 };
+    let partial: Vec<(Array2<T>, Array2<T>)> = block
+        .axis_chunks_iter_mut(Axis(1), CHUNK)
+        .into_par_iter()
+        .zip(chunks(basis))
+        .map(|(mut whole, v)| {
+            let before = transform.map(|_| whole.to_owned());
+            let mut w = whole.slice_mut(s![..width, ..]);
+            if let (Some(matrix), Some(before)) = (transform, before) {
+                multiply_into(
+                    T::one(),
+                    matrix.view(),
+                    before.view(),
+                    T::zero(),
+                    w.view_mut(),
+                );
+            }
+            if let Some(matrix) = subtract {
+                let last = v.slice(s![v.nrows() - matrix.nrows().., ..]);
+                multiply_into(-T::one(), matrix.t(), last, T::one(), w.view_mut());
+            }
+            let overlaps = conjugate_product(v.slice(s![..rows, ..]), w.view());
+            (overlaps, conjugate_product(w.view(), w.view()))
+        })
+        .collect();
+    let (overlaps, grams): (Vec<_>, Vec<_>) = partial.into_iter().unzip();
+    Measured {
+        overlaps: sum(overlaps, (rows, width)),
+        gram: sum(grams, (width, width)),
+    }
+}
+
+/// Subtracts from the block its part inside the basis, once; its overlaps with the basis before
+/// and its Gram matrix after.
+pub(super) fn subtract_basis<T: Scalar>(
+    basis: ArrayView2<'_, T>,
+    block: ArrayViewMut2<'_, T>,
+) -> (Array2<T>, Array2<T>) {
+    let inside = overlaps(basis, block.view());
+    let measured = sweep(basis, block, None, Some(&inside), false);
+    (inside, measured.gram)
+}
+
+/// The first rows of the basis <- Y^T V, in place: column k of Y holds the coefficients of row k.
+pub(super) fn rotate<T: Scalar>(mut basis: ArrayViewMut2<'_, T>, coefficients: ArrayView2<'_, T>) {
+    basis
+        .axis_chunks_iter_mut(Axis(1), CHUNK)
+        .into_par_iter()
+        .for_each(|mut chunk| {
+            let before = chunk.to_owned();
+            let rows = chunk.slice_mut(s![..coefficients.ncols(), ..]);
+            multiply_into(T::one(), coefficients.t(), before.view(), T::zero(), rows);
+        });
+}
+
+/// The transformation that makes the rows of a block orthonormal, from their Gram matrix.
+struct Whitening<T> {
+    /// M, `(rows kept, rows)`.
+    transform: Array2<T>,
+    /// N with W = N^T (M W) for the rows kept.
+    inverse: Array2<T>,
+    /// Smallest over largest Gram eigenvalue.
+    condition: f64,
+}
+
+impl<T: Scalar> Whitening<T> {
+    /// Keeps the `room` strongest directions.
+    fn new(gram: &Array2<T>, room: usize) -> Result<Self> {
+        if gram.iter().any(|value| !value.is_finite()) {
+            return Err(Error::argument(
+                "operator",
+                "infinite or NaN components in a product",
+                "finite vectors from finite vectors",
+            ));
+        }
+        let eigen = eigh(gram.view())?;
+        let width = gram.nrows().min(room);
+        let dropped = gram.nrows() - width;
+        let top = eigen.values.last().copied().unwrap_or(0.0);
+        // weaker directions drown in the rounding of the Gram matrix: the next round scales them
+        let sizes = eigen.values.slice(s![dropped..]);
+        let sizes = sizes.mapv(|value| value.max(f64::EPSILON * top).sqrt());
+        let directions = eigen.vectors.slice(s![.., dropped..]).reversed_axes();
+        let scaled = |matrix: Array2<T>, factor: &dyn Fn(f64) -> f64| {
+            let factors = sizes.mapv(|size| T::from_real(factor(size)));
+            matrix * factors.insert_axis(Axis(1))
+        };
+        let inverse_size = |size: f64| if size > 0.0 { 1.0 / size } else { 0.0 };
+        Ok(Whitening {
+            transform: scaled(directions.to_owned(), &inverse_size),
+            inverse: scaled(directions.mapv(T::conj), &|size| size),
+            condition: if top > 0.0 {
+                eigen.values[0] / top
+            } else {
+                0.0
+            },
+        })
+    }
+}
+
+fn largest<T: Scalar>(matrix: &Array2<T>) -> f64 {
+    matrix.iter().map(|value| value.abs()).fold(0.0, f64::max)
+}
+
+fn deviation_from_one<T: Scalar>(gram: &Array2<T>) -> f64 {
+    largest(&(gram - &Array2::<T>::eye(gram.nrows())))
+}
+
+/// Fills a row with random numbers, of norm one on average.
+pub(super) fn fill_random<T: Scalar, R: Rng>(mut row: ArrayViewMut1<'_, T>, generator: &mut R) {
+    let scale = 1.0 / (row.len() as f64).sqrt();
+    row.mapv_inplace(|_| T::random_normal(generator) * scale);
+}
+
+/// Replaces the rows whose weight in the original block is rounding noise; whether there were any.
+fn replace_noise<T: Scalar, R: Rng>(
+    mut block: ArrayViewMut2<'_, T>,
+    outside: &mut Array2<T>,
+    noise: f64,
+    generator: &mut R,
+) -> bool {
+    let mut any = false;
+    for (row, mut weights) in block.rows_mut().into_iter().zip(outside.rows_mut()) {
+        let norm = weights.iter().map(|w| w.abs_sqr()).sum::<f64>().sqrt();
+        if norm <= noise {
+            weights.fill(T::zero());
+            fill_random(row, generator);
+            any = true;
+        }
+    }
+    any
+}
+
+/// How [`orthonormalize`] is to treat a block.
+pub(super) struct Purge {
+    /// First row of the basis that the block is known to overlap with; earlier rows are
+    /// measured, and subtracted only if need be.
+    pub first_expected: usize,
+    /// Norm up to which a row outside the basis counts as rounding noise.
+    pub noise: f64,
+}
+
+/// Splits the block into its part inside the basis and orthonormal rows, which replace it.
+///
+/// Rows lost to rank deficiency are replaced by random ones, as long as the space has room:
+/// `outside.nrows()` rows of the block are valid afterwards. Overlaps are measured on the final
+/// rows and removed until they vanish: two passes are enough (Daniel, Gragg, Kaufman and
+/// Stewart, Math. Comp. 30, 772 (1976); recalled), and one often is.
+///
+/// # Errors
+/// [`Error::Argument`] if the block has components that are not finite.
+pub(super) fn orthonormalize<T: Scalar, R: Rng>(
+    basis: ArrayView2<'_, T>,
+    mut block: ArrayViewMut2<'_, T>,
+    purge: &Purge,
+    generator: &mut R,
+) -> Result<Split<T>> {
+    let room = basis.ncols() - basis.nrows();
+    let expected = overlaps(basis.slice(s![purge.first_expected.., ..]), block.view());
+    let mut inside = Array2::zeros((basis.nrows(), block.nrows()));
+    let mut rows = inside.slice_mut(s![purge.first_expected.., ..]);
+    rows.assign(&expected);
+    let mut outside = Array2::<T>::eye(block.nrows());
+    let mut measured = sweep(basis, block.view_mut(), None, Some(&expected), true);
+    for count in 0..MOST_SWEEPS {
+        let whitening = Whitening::new(&measured.gram, room)?;
+        let remaining = measured.overlaps.dot(&whitening.transform.t());
+        let width = whitening.transform.nrows();
+        let aligned = largest(&remaining) <= ORTHOGONALITY;
+        let complete = width == outside.nrows();
+        if complete && aligned && deviation_from_one(&measured.gram) <= ORTHOGONALITY {
+            break;
+        }
+        let measure = !aligned || whitening.condition < WELL_CONDITIONED;
+        let subtract = (!aligned).then_some(&remaining);
+        let rows = block.slice_mut(s![..outside.nrows(), ..]);
+        measured = sweep(basis, rows, Some(&whitening.transform), subtract, measure);
+        outside = whitening.inverse.dot(&outside);
+        if !aligned {
+            inside = inside + remaining.dot(&outside);
+        }
+        let rows = block.slice_mut(s![..width, ..]);
+        if count < 3 && replace_noise(rows, &mut outside, purge.noise, generator) {
+            measured = sweep(basis, block.slice_mut(s![..width, ..]), None, None, true);
+        } else if !measure {
+            measured.overlaps = remaining;
+        }
+    }
+    Ok(Split { inside, outside })
+}

@@ -1,0 +1,448 @@
+//! Against dense diagonalisation and spectra known in closed form; always by iteration unless
+//! said otherwise.
+
+use super::*;
+use crate::dense::{Conjugate, Threads, eigh, multiply};
+use crate::progress::{Progress, silent};
+use ndarray::{ArrayViewMut2, Axis, s};
+use num_complex::Complex64;
+use rand::SeedableRng;
+use rand_chacha::ChaCha8Rng;
+use std::ops::ControlFlow;
+
+struct Matrix<T>(Array2<T>);
+
+impl<T: Scalar> LinearOperator<T> for Matrix<T> {
+    fn dimension(&self) -> usize {
+        self.0.nrows()
+    }
+    fn apply(&self, block: ArrayView2<'_, T>, out: ArrayViewMut2<'_, T>) -> Result<()> {
+        let (left, right) = ((block, Conjugate::No), (self.0.t(), Conjugate::No));
+        multiply(T::one(), left, right, T::zero(), out, Threads::All);
+        Ok(())
+    }
+    fn diagonal(&self) -> Array1<f64> {
+        self.0.diag().mapv(T::re)
+    }
+}
+
+struct Diagonal(Vec<f64>);
+
+impl<T: Scalar> LinearOperator<T> for Diagonal {
+    fn dimension(&self) -> usize {
+        self.0.len()
+    }
+    fn apply(&self, block: ArrayView2<'_, T>, mut out: ArrayViewMut2<'_, T>) -> Result<()> {
+        out.assign(&block);
+        for (mut column, &level) in out.axis_iter_mut(Axis(1)).zip(&self.0) {
+            column.mapv_inplace(|x| x * level);
+        }
+        Ok(())
+    }
+    fn diagonal(&self) -> Array1<f64> {
+        Array1::from(self.0.clone())
+    }
+}
+
+fn random_hermitian<T: Scalar>(n: usize, seed: u64) -> Array2<T> {
+    let mut generator = ChaCha8Rng::seed_from_u64(seed);
+    let a = Array2::from_shape_fn((n, n), |_| T::random_normal(&mut generator));
+    Array2::from_shape_fn((n, n), |(i, j)| (a[[i, j]] + a[[j, i]].conj()) * 0.5)
+}
+
+fn iterative<'a, T>(levels: usize) -> LevelRequest<'a, T> {
+    LevelRequest {
+        dense_limit: 0,
+        ..LevelRequest::new(levels)
+    }
+}
+
+fn solve<T: Scalar>(operator: &dyn LinearOperator<T>, request: &LevelRequest<'_, T>) -> Levels<T> {
+    lowest_levels(operator, request, &mut silent).unwrap()
+}
+
+/// Everything that must hold for any converged result, given the exact spectrum.
+fn check<T: Scalar>(operator: &dyn LinearOperator<T>, result: &Levels<T>, spectrum: &[f64]) {
+    assert_eq!(result.status, Status::Converged);
+    let found = result.energies.len();
+    let scale = spectrum.iter().fold(1.0, |top: f64, e| top.max(e.abs()));
+    for (k, (&energy, &bound)) in result.energies.iter().zip(&result.error_bounds).enumerate() {
+        let error = (energy - spectrum[k]).abs();
+        assert!(
+            error < 1e-9,
+            "level {k}: {energy} but exactly {}",
+            spectrum[k]
+        );
+        assert!(
+            error <= bound + 1e-14 * scale,
+            "level {k}: {error:e} > {bound:e}"
+        );
+    }
+    let v = &result.vectors;
+    assert_eq!(v.dim(), (found, operator.dimension()));
+    let overlap = v.mapv(T::conj).dot(&v.t()) - Array2::<T>::eye(found);
+    assert!(overlap.iter().all(|x| x.abs() < 1e-11), "not orthonormal");
+    let mut images = Array2::zeros(v.dim());
+    operator.apply(v.view(), images.view_mut()).unwrap();
+    for k in 0..found {
+        let difference = &images.row(k) - &(&v.row(k) * T::from_real(result.energies[k]));
+        let norm = difference.iter().map(|x| x.abs_sqr()).sum::<f64>().sqrt();
+        assert!(norm < 4e-10 * scale, "residual {norm:e}");
+        assert!((norm - result.residuals[k]).abs() < 1e-12 * scale);
+        let top = v.row(k).iter().fold(0.0, |top: f64, x| top.max(x.abs()));
+        let leader = v
+            .row(k)
+            .iter()
+            .find(|x| x.abs() >= top * (1.0 - 1e-8))
+            .copied()
+            .unwrap();
+        assert!(leader.re() > 0.0 && leader.im().abs() < 1e-14);
+    }
+    if result.last_multiplet_complete {
+        let next = spectrum.get(found).copied();
+        assert_eq!(result.next_energy.is_some(), next.is_some());
+        if let (Some(next), Some(got), Some(error)) = (next, result.next_energy, result.next_error)
+        {
+            assert!(
+                (next - got).abs() <= error + 1e-14 * scale,
+                "next {got}, exactly {next}"
+            );
+            assert!(next - spectrum[found - 1] > 1e-9);
+        }
+    }
+    let covered: Vec<usize> = result.multiplets.iter().cloned().flatten().collect();
+    assert_eq!(covered, (0..found).collect::<Vec<_>>());
+}
+
+fn against_dense<T: Scalar>(n: usize, levels: usize, seed: u64) {
+    let matrix = random_hermitian::<T>(n, seed);
+    let spectrum = eigh(matrix.view()).unwrap().values.to_vec();
+    let operator = Matrix(matrix);
+    let result = solve(&operator, &iterative(levels));
+    check(&operator, &result, &spectrum);
+    assert_eq!(result.energies.len(), levels);
+    assert_eq!(result.method, "block Lanczos");
+    let LevelCount::Probed {
+        failure_probability,
+    } = result.level_count
+    else {
+        panic!("level count {:?}", result.level_count);
+    };
+    assert!(failure_probability < 0.1, "{failure_probability}");
+}
+
+#[test]
+fn random_real_matrices() {
+    against_dense::<f64>(600, 3, 1);
+    against_dense::<f64>(900, 12, 2);
+}
+
+#[test]
+fn random_complex_matrices() {
+    against_dense::<Complex64>(600, 4, 3);
+    against_dense::<Complex64>(700, 1, 4);
+}
+
+#[test]
+fn multiplets_come_out_complete() {
+    // multiplicities 7, 5, 3, then distinct levels
+    let mut levels = vec![-2.0; 7];
+    levels.extend([-1.0; 5]);
+    levels.extend([-0.5; 3]);
+    levels.extend((0..785).map(|k| 0.01 * k as f64));
+    let mut operator = Diagonal(levels.clone());
+    operator.0.rotate_left(300);
+    for (wanted, found) in [
+        (1, 7),
+        (6, 7),
+        (7, 7),
+        (8, 12),
+        (13, 15),
+        (15, 15),
+        (16, 16),
+    ] {
+        let result = solve::<f64>(&operator, &iterative(wanted));
+        check(&operator, &result, &levels);
+        assert_eq!(result.energies.len(), found, "{wanted} wanted");
+        assert!(result.last_multiplet_complete);
+    }
+    let result = solve::<Complex64>(&operator, &iterative(8));
+    check(&operator, &result, &levels);
+    assert_eq!(result.multiplets, [0..7, 7..12]);
+}
+
+#[test]
+fn one_level_only() {
+    for value in [0.0, 1.0, -3.5] {
+        let operator = Diagonal(vec![value; 500]);
+        let result = solve::<f64>(&operator, &iterative(3));
+        check(&operator, &result, &[value; 500]);
+        assert_eq!(result.energies.len(), 3 + 16);
+        assert!(!result.last_multiplet_complete);
+        assert_eq!(result.next_energy, None);
+    }
+}
+
+#[test]
+fn tiny_dimensions_are_exhausted() {
+    for n in 1..=6 {
+        let spectrum: Vec<f64> = (0..n).map(|k| (k / 2) as f64 - 1.0).collect();
+        let operator = Diagonal(spectrum.clone());
+        for wanted in 1..=n {
+            let result = solve::<f64>(&operator, &iterative(wanted));
+            check(&operator, &result, &spectrum);
+            assert!(result.last_multiplet_complete);
+        }
+        let zero = Diagonal(vec![0.0; n]);
+        let result = solve::<Complex64>(&zero, &iterative(1));
+        check(&zero, &result, &vec![0.0; n]);
+        assert_eq!(result.level_count, LevelCount::Proved);
+        assert_eq!(result.energies.len(), n);
+    }
+}
+
+#[test]
+fn all_levels_of_a_space() {
+    let matrix = random_hermitian::<Complex64>(60, 8);
+    let spectrum = eigh(matrix.view()).unwrap().values.to_vec();
+    let operator = Matrix(matrix);
+    for request in [iterative(60), LevelRequest::new(60)] {
+        let result = solve(&operator, &request);
+        check(&operator, &result, &spectrum);
+        assert_eq!(result.level_count, LevelCount::Proved);
+        assert_eq!(result.next_energy, None);
+    }
+}
+
+/// One particle on a ring: 2 - 2 cos(2 pi m / n) by closed form, doubly degenerate.
+fn ring(n: usize) -> (Matrix<f64>, Vec<f64>) {
+    let mut matrix = Array2::eye(n) * 2.0;
+    for i in 0..n {
+        matrix[[i, (i + 1) % n]] -= 1.0;
+        matrix[[(i + 1) % n, i]] -= 1.0;
+    }
+    let angle = |m: usize| 2.0 * std::f64::consts::PI * m as f64 / n as f64;
+    let mut levels: Vec<f64> = (0..n).map(|m| 2.0 - 2.0 * angle(m).cos()).collect();
+    levels.sort_by(f64::total_cmp);
+    (Matrix(matrix), levels)
+}
+
+#[test]
+fn degenerate_pairs_of_a_ring() {
+    let (operator, levels) = ring(240);
+    for (wanted, found) in [(1, 1), (2, 3), (3, 3), (6, 7)] {
+        let result = solve(&operator, &iterative(wanted));
+        check(&operator, &result, &levels);
+        assert_eq!(result.energies.len(), found);
+    }
+}
+
+#[test]
+fn dense_and_iterative_agree() {
+    let (operator, levels) = ring(200);
+    let dense = solve(&operator, &LevelRequest::new(2));
+    check(&operator, &dense, &levels);
+    assert_eq!(
+        (dense.method, dense.level_count),
+        ("dense", LevelCount::Proved)
+    );
+    assert_eq!(dense.energies.len(), 3);
+    let limit = LevelRequest {
+        memory_limit: 40 * 200 * 8,
+        ..LevelRequest::new(2)
+    };
+    assert_eq!(solve(&operator, &limit).method, "block Lanczos");
+}
+
+#[test]
+fn a_good_start_saves_products() {
+    let matrix = random_hermitian::<f64>(800, 5);
+    let operator = Matrix(matrix);
+    let cold = solve(&operator, &iterative(3));
+    let warm = LevelRequest {
+        start: Some(cold.vectors.view()),
+        ..iterative(3)
+    };
+    let warm = solve(&operator, &warm);
+    let spectrum = eigh(operator.0.view()).unwrap().values.to_vec();
+    check(&operator, &warm, &spectrum);
+    assert!(
+        warm.products < cold.products,
+        "{} {}",
+        warm.products,
+        cold.products
+    );
+}
+
+#[test]
+fn a_misleading_start_hides_nothing() {
+    let spectrum: Vec<f64> = (0..700).map(|k| (k as f64).sqrt()).collect();
+    let operator = Diagonal(spectrum.clone());
+    // exact excited states, twice, and a zero row
+    let mut start = Array2::<f64>::zeros((4, 700));
+    start[[0, 5]] = 1.0;
+    start[[1, 5]] = -2.0;
+    start[[2, 9]] = 1e-3;
+    let request = LevelRequest {
+        start: Some(start.view()),
+        ..iterative(3)
+    };
+    check(&operator, &solve(&operator, &request), &spectrum);
+}
+
+#[test]
+fn interruption_gives_what_there_is() {
+    let operator = Matrix(random_hermitian::<f64>(600, 6));
+    for steps in [1, 2, 30] {
+        let mut calls = 0;
+        let mut monitor = |_: &Progress| {
+            calls += 1;
+            if calls == steps {
+                ControlFlow::Break(())
+            } else {
+                ControlFlow::Continue(())
+            }
+        };
+        let result = lowest_levels(&operator, &iterative(3), &mut monitor).unwrap();
+        assert_eq!(result.status, Status::Interrupted);
+        assert_eq!(result.products, 2 * steps);
+        assert_eq!(result.level_count, LevelCount::Unchecked);
+        assert_eq!(result.energies.len(), (2 * steps).min(3));
+        let norms = result.vectors.map_axis(Axis(1), |row| row.dot(&row));
+        assert!(norms.iter().all(|n| (n - 1.0).abs() < 1e-10));
+    }
+    let mut stop = |_: &Progress| ControlFlow::Break(());
+    let dense = LevelRequest {
+        dense_limit: 600,
+        ..iterative(3)
+    };
+    let result = lowest_levels(&operator, &dense, &mut stop).unwrap();
+    assert_eq!(
+        (result.status, result.energies.len()),
+        (Status::Interrupted, 0)
+    );
+}
+
+#[test]
+fn too_few_products_give_true_partial_results() {
+    let operator = Matrix(random_hermitian::<Complex64>(600, 7));
+    let request = LevelRequest {
+        max_products: 80,
+        ..iterative(3)
+    };
+    let result = solve(&operator, &request);
+    assert_eq!(result.status, Status::NotConverged);
+    assert!(result.products <= 80);
+    let mut images = Array2::zeros(result.vectors.dim());
+    operator
+        .apply(result.vectors.view(), images.view_mut())
+        .unwrap();
+    for (k, &energy) in result.energies.iter().enumerate() {
+        let difference = &images.row(k) - &(&result.vectors.row(k) * Complex64::from(energy));
+        let norm = difference.iter().map(|x| x.abs_sqr()).sum::<f64>().sqrt();
+        assert!((norm - result.residuals[k]).abs() < 1e-10 && norm > 1e-8);
+        assert!(result.error_bounds[k] >= norm * 0.999);
+    }
+}
+
+#[test]
+fn the_same_seed_gives_the_same_bits_on_any_number_of_threads() {
+    let operator = Diagonal((0..20_000).map(|k| (k as f64).powf(0.3)).collect());
+    let on = |threads| {
+        let pool = rayon::ThreadPoolBuilder::new()
+            .num_threads(threads)
+            .build()
+            .unwrap();
+        pool.install(|| solve::<f64>(&operator, &iterative(2)))
+    };
+    let (one, two) = (on(1), on(2));
+    assert_eq!(one.energies, two.energies);
+    assert_eq!(one.vectors, two.vectors);
+    assert_eq!(one.products, two.products);
+}
+
+#[test]
+fn memory_limits_are_kept_or_refused() {
+    let spectrum: Vec<f64> = (0..900).map(|k| (k as f64).sqrt()).collect();
+    let operator = Diagonal(spectrum.clone());
+    let rows = |count: usize| LevelRequest::<f64> {
+        memory_limit: count * 900 * 8,
+        ..iterative(3)
+    };
+    check(&operator, &solve(&operator, &rows(12)), &spectrum);
+    let refused = lowest_levels(&operator, &rows(6), &mut silent);
+    assert!(matches!(refused, Err(Error::Memory { .. })));
+}
+
+#[test]
+fn requests_without_sense_are_refused() {
+    let operator = Diagonal(vec![0.0; 10]);
+    let start = Array2::<f64>::from_elem((1, 10), f64::NAN);
+    let short = Array2::<f64>::zeros((1, 9));
+    let base = || LevelRequest::<f64>::new(1);
+    for request in [
+        LevelRequest {
+            levels: 0,
+            ..base()
+        },
+        LevelRequest {
+            levels: 11,
+            ..base()
+        },
+        LevelRequest {
+            tolerance: 0.0,
+            ..base()
+        },
+        LevelRequest {
+            tolerance: f64::NAN,
+            ..base()
+        },
+        LevelRequest {
+            start: Some(start.view()),
+            ..base()
+        },
+        LevelRequest {
+            start: Some(short.view()),
+            ..base()
+        },
+    ] {
+        let result = lowest_levels(&operator, &request, &mut silent);
+        assert!(matches!(result, Err(Error::Argument { .. })), "{request:?}");
+    }
+    let nan = Diagonal(vec![f64::NAN; 10]);
+    assert!(lowest_levels(&nan, &iterative::<f64>(1), &mut silent).is_err());
+}
+
+#[test]
+fn a_probability_of_missing_a_level_is_kept() {
+    // the lowest level has a tiny gap, so a short search cannot see it: the bound must say so
+    let mut levels: Vec<f64> = (0..3000).map(|k| k as f64).collect();
+    levels[0] = 0.5;
+    let operator = Diagonal(levels);
+    let run = |known: usize, budget| {
+        let mut run = lanczos::BlockLanczos::<f64>::new(&operator, 10, 0).unwrap();
+        let mut start = Array2::zeros((known, 3000));
+        start.slice_mut(s![.., 1..=known]).diag_mut().fill(1.0);
+        let generator = ChaCha8Rng::seed_from_u64(1);
+        run.begin(0, known, start.view(), generator).unwrap();
+        let bounds = vec![known as f64 + 0.1];
+        let probe = probe::Probe {
+            known,
+            bounds,
+            budget,
+            levels: 3,
+        };
+        probe
+            .search(
+                &operator,
+                &mut run,
+                ChaCha8Rng::seed_from_u64(2),
+                &mut silent,
+            )
+            .unwrap()
+    };
+    assert!(
+        matches!(run(3, 20), probe::Finding::Nothing { failure_probability } if failure_probability > 0.5)
+    );
+    assert_eq!(run(3, 1000), probe::Finding::Missed { bound: 3.1 });
+}
