@@ -30,3 +30,6 @@ pub mod progress;
 pub mod scalar;
 pub mod sector;
 pub mod weights;
+
+#[cfg(feature = "python")]
+mod python;

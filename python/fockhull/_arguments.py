@@ -1,4 +1,4 @@
-"""Checks of arguments shared by `fockhull.lattices` and `fockhull.couplings`.
+"""Checks of arguments, shared by all modules.
 
 Each check returns the argument in the one form the builders work with, as a
 new array wherever the builder writes to it, or raises an error that names the
@@ -137,6 +137,55 @@ def bonds(argument: str, value: npt.ArrayLike, sites: int) -> IndexArray:
     return pairs.astype(np.intp)
 
 
+def indices(argument: str, value: npt.ArrayLike) -> npt.NDArray[np.uint64]:
+    """Return integers counted from 0, of any shape."""
+    array = _integers(argument, value)
+    if (array < 0).any():
+        raise ArgumentIndexError(argument, array[array < 0][0], "integers counted from 0")
+    return array.astype(np.uint64)
+
+
+def occupation_numbers(argument: str, value: npt.ArrayLike) -> npt.NDArray[np.uint32]:
+    """Return numbers of particles, of any shape."""
+    array = _integers(argument, value)
+    if (array < 0).any() or (array > np.iinfo(np.uint32).max).any():
+        raise ArgumentError(argument, "a negative or huge number", "numbers of particles")
+    return array.astype(np.uint32)
+
+
+def positive(argument: str, value: npt.ArrayLike) -> float:
+    """Return one finite positive real number."""
+    result = real(argument, value)
+    if result <= 0.0:
+        raise ArgumentError(argument, result, "a positive number")
+    return result
+
+
+def tensor(argument: str, value: npt.ArrayLike, *shapes: tuple[int, ...]) -> ScalarArray:
+    """Return a C-contiguous array of one of the given shapes."""
+    array = scalars(argument, value)
+    if array.shape not in shapes:
+        expected = " or ".join(str(shape) for shape in dict.fromkeys(shapes))
+        raise ArgumentError(argument, f"shape {array.shape}", f"shape {expected}")
+    return np.ascontiguousarray(array)
+
+
+def vectors(argument: str, value: npt.ArrayLike, dimension: int) -> ScalarArray:
+    """Return vectors as columns, (dimension,) or (dimension, k), without a copy if possible."""
+    array = _as_array(argument, value, "real or complex numbers")
+    if array.dtype not in (np.float64, np.complex128):
+        array = scalars(argument, array)
+    if array.ndim not in (1, 2) or array.shape[0] != dimension:
+        expected = f"shape ({dimension},) or ({dimension}, k), columns being vectors"
+        raise ArgumentError(argument, f"shape {array.shape}", expected)
+    # the sum shows NaN and infinity at a fraction of the cost of looking at each number
+    with np.errstate(all="ignore"):
+        suspicious = not np.isfinite(array.sum())
+    if suspicious and not np.isfinite(array).all():
+        raise ArgumentError(argument, "NaN or infinity", "finite numbers")
+    return array
+
+
 def flags(argument: str, value: object, length: int) -> tuple[bool, ...]:
     """Return one boolean for each of `length` directions, from one for all or one for each."""
     expected = f"True or False, or one for each direction: {length} of them"
@@ -165,6 +214,13 @@ def _as_array(argument: str, value: object, expected: str) -> npt.NDArray[Any]:
     except (ValueError, TypeError):
         given = f"{type(value).__name__} that does not form a regular array"
         raise ArgumentTypeError(argument, given, expected) from None
+
+
+def _integers(argument: str, value: npt.ArrayLike) -> npt.NDArray[Any]:
+    array = _as_array(argument, value, "integers")
+    if array.dtype.kind not in "iu":
+        raise ArgumentTypeError(argument, f"dtype {array.dtype}", "integers")
+    return array
 
 
 def _real(argument: str, array: ScalarArray) -> RealArray:

@@ -1,8 +1,8 @@
-//! Partial traces to one-body density matrices gamma_pq = <a+_q a_p>, and their natural
-//! orbitals.
+//! What is read off state vectors: one-body density matrices gamma_pq = <a+_q a_p> by partial
+//! traces, and the total spin.
 
-mod natural;
 mod one_body;
+mod spin;
 
-pub use natural::{NaturalOrbitals, natural_orbitals};
 pub use one_body::{ensemble_density_matrix, state_density_matrices};
+pub use spin::spin_squared;

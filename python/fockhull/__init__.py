@@ -1,0 +1,36 @@
+"""Ensemble density-matrix functional theory: certified references for ground and excited states.
+
+Give it one-body terms, an interaction and weights; get ensemble energies with error bounds,
+one-body density matrices, natural occupations, and the verdict of the exclusion polytope.
+"""
+
+from importlib import import_module
+from typing import TYPE_CHECKING, Any
+
+from fockhull import couplings, errors, lattices
+from fockhull._core import __version__
+from fockhull.ensemble import Ensemble, LevelCount, SolveProgress, solve
+from fockhull.errors import CutMultipletWarning, FockhullError
+from fockhull.hamiltonian import Hamiltonian, MemoryEstimate
+from fockhull.interaction import Interaction
+from fockhull.sectors import Bosons, Fermions, LowestConfigurations, SpinHalfFermions
+
+__all__ = [
+    "Bosons",
+    "CutMultipletWarning",
+    "Ensemble",
+    "Fermions",
+    "FockhullError",
+    "Hamiltonian",
+    "Interaction",
+    "LevelCount",
+    "LowestConfigurations",
+    "MemoryEstimate",
+    "SolveProgress",
+    "SpinHalfFermions",
+    "__version__",
+    "couplings",
+    "errors",
+    "lattices",
+    "solve",
+]
