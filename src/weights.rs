@@ -25,7 +25,7 @@ impl Weights {
         if values.windows(2).any(|pair| pair[1] > pair[0] + TOLERANCE) {
             return refuse("values in decreasing order (the lowest state first); sort them");
         }
-        let sum: f64 = values.iter().sum();
+        let sum = compensated_sum(values);
         if (sum - 1.0).abs() > TOLERANCE {
             return refuse(&format!(
                 "a sum of one to within {TOLERANCE:e} (it is {sum}); divide by the sum"
@@ -37,7 +37,7 @@ impl Weights {
             let ceiling = kept.last().copied().unwrap_or(f64::INFINITY);
             kept.push(value.min(ceiling));
         }
-        let sum: f64 = kept.iter().sum();
+        let sum = compensated_sum(&kept);
         kept.iter_mut().for_each(|w| *w /= sum);
         Ok(Weights(kept))
     }
@@ -58,6 +58,37 @@ impl Weights {
     }
 }
 
+/// Sum that keeps what rounding drops (Neumaier's summation).
+#[derive(Debug, Clone, Copy, Default)]
+pub(crate) struct CompensatedSum {
+    sum: f64,
+    lost: f64,
+}
+
+impl CompensatedSum {
+    #[inline]
+    pub(crate) fn add(&mut self, value: f64) {
+        let next = self.sum + value;
+        self.lost += if self.sum.abs() >= value.abs() {
+            (self.sum - next) + value
+        } else {
+            (value - next) + self.sum
+        };
+        self.sum = next;
+    }
+
+    pub(crate) fn value(&self) -> f64 {
+        self.sum + self.lost
+    }
+}
+
+/// Sum without the rounding errors that many equal terms pile up.
+pub(crate) fn compensated_sum(values: &[f64]) -> f64 {
+    let mut sum = CompensatedSum::default();
+    values.iter().for_each(|&value| sum.add(value));
+    sum.value()
+}
+
 fn shortened(values: &[f64]) -> String {
     if values.len() <= 8 {
         format!("{values:?}")
@@ -75,6 +106,11 @@ mod tests {
         let weights = Weights::new(&[0.5, 0.5, 0.0]).unwrap();
         assert_eq!(weights.as_slice(), &[0.5, 0.5]);
         assert_eq!(weights.get(2), 0.0);
+    }
+
+    #[test]
+    fn many_equal_weights_sum_to_one() {
+        assert!(Weights::new(&[1e-5; 100_000]).is_ok());
     }
 
     #[test]

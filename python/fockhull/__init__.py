@@ -4,21 +4,21 @@ Give it one-body terms, an interaction and weights; get ensemble energies with e
 one-body density matrices, natural occupations, and the verdict of the exclusion polytope.
 """
 
-from importlib import import_module
-from typing import TYPE_CHECKING, Any
-
 from fockhull import couplings, errors, lattices
 from fockhull._core import __version__
 from fockhull.ensemble import Ensemble, LevelCount, SolveProgress, solve
 from fockhull.errors import CutMultipletWarning, FockhullError
 from fockhull.hamiltonian import Hamiltonian, MemoryEstimate
 from fockhull.interaction import Interaction
+from fockhull.polytope import ConfigurationEnsemble, ExclusionPolytope, Projection, Stretch
 from fockhull.sectors import Bosons, Fermions, LowestConfigurations, SpinHalfFermions
 
 __all__ = [
     "Bosons",
+    "ConfigurationEnsemble",
     "CutMultipletWarning",
     "Ensemble",
+    "ExclusionPolytope",
     "Fermions",
     "FockhullError",
     "Hamiltonian",
@@ -26,8 +26,10 @@ __all__ = [
     "LevelCount",
     "LowestConfigurations",
     "MemoryEstimate",
+    "Projection",
     "SolveProgress",
     "SpinHalfFermions",
+    "Stretch",
     "__version__",
     "couplings",
     "errors",

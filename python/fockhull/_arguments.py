@@ -85,15 +85,20 @@ def hermitian(argument: str, value: npt.ArrayLike) -> ScalarArray:
     matrix = scalars(argument, value)
     if matrix.ndim != 2 or matrix.shape[0] != matrix.shape[1]:
         raise ArgumentError(argument, f"shape {matrix.shape}", "a square matrix")
-    adjoint = matrix.conj().T
-    deviation = float(np.abs(matrix - adjoint).max(initial=0.0))
-    if deviation > SYMMETRY_TOLERANCE * np.abs(matrix).max(initial=0.0):
+    return hermitian_stack(argument, matrix)
+
+
+def hermitian_stack(argument: str, matrices: ScalarArray) -> ScalarArray:
+    """Return square matrices, leading axes a batch, made exactly Hermitian if they nearly are."""
+    adjoint = matrices.conj().swapaxes(-1, -2)
+    deviation = float(np.abs(matrices - adjoint).max(initial=0.0))
+    if deviation > SYMMETRY_TOLERANCE * np.abs(matrices).max(initial=0.0):
         raise ArgumentError(
             argument,
             f"a deviation from Hermiticity of {deviation:.3g}",
             "a Hermitian matrix (for real numbers: a symmetric one)",
         )
-    return np.asarray((matrix + adjoint) / 2, dtype=matrix.dtype)
+    return np.asarray((matrices + adjoint) / 2, dtype=matrices.dtype)
 
 
 def symmetric(argument: str, value: npt.ArrayLike) -> RealArray:

@@ -9,6 +9,7 @@ mod door;
 mod hamiltonian;
 mod interaction;
 mod levels;
+mod polytope;
 mod sector;
 
 use pyo3::prelude::*;
@@ -22,6 +23,8 @@ mod _core {
     use super::interaction::Interaction;
     #[pymodule_export]
     use super::levels::{Levels, checked_weights, density_matrices, lowest_levels, spin_squared};
+    #[pymodule_export]
+    use super::polytope::{ExclusionPolytope, Projections};
     #[pymodule_export]
     use super::sector::Sector;
     use super::*;

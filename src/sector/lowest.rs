@@ -10,6 +10,7 @@
 
 use super::configuration::Sector;
 use crate::error::{Error, Result};
+use crate::weights::{CompensatedSum, compensated_sum};
 use ndarray::{Array2, Array3, ArrayView2};
 use num_bigint::BigUint;
 use std::cmp::{Ordering, Reverse};
@@ -134,12 +135,14 @@ impl LowestConfigurations {
         debug_assert_eq!(weights.len(), self.nodes.len());
         let modes = self.streams.first().map_or(0, |stream| stream.order.len());
         let mut result = Array2::zeros((self.streams.len(), modes));
+        // one total for all components, so that filled modes do not differ by rounding
+        let total = compensated_sum(weights);
         for (spin, stream) in self.streams.iter().enumerate() {
             let mut marginal = vec![0.0; stream.found.len()];
             for (node, weight) in self.nodes.iter().zip(weights) {
                 marginal[node[spin] as usize] += weight;
             }
-            let mixed = stream.mixed_occupations(marginal);
+            let mixed = stream.mixed_occupations(marginal, total);
             result
                 .row_mut(spin)
                 .assign(&ndarray::ArrayView1::from(&mixed));
@@ -341,13 +344,9 @@ impl Stream {
     }
 
     /// sum_k weights[k] x occupations of configuration k; each box counts for all descendants.
-    fn mixed_occupations(&self, mut weights: Vec<f64>) -> Vec<f64> {
-        let total: f64 = weights.iter().sum();
-        let mut levels: Vec<f64> = self
-            .ground_occupations()
-            .iter()
-            .map(|&n| f64::from(n) * total)
-            .collect();
+    fn mixed_occupations(&self, mut weights: Vec<f64>, total: f64) -> Vec<f64> {
+        // what passes from each sorted mode to the next
+        let mut flows = vec![CompensatedSum::default(); self.sorted.len()];
         // descendants come after their parents, so a backward pass has complete sums
         for (k, node) in self.found.iter().enumerate().rev() {
             if node.parent == NO_PARENT {
@@ -355,8 +354,18 @@ impl Stream {
             }
             let weight = weights[k];
             weights[node.parent as usize] += weight;
-            levels[node.from as usize] -= weight;
-            levels[node.from as usize + 1] += weight;
+            flows[node.from as usize].add(weight);
+        }
+        let mut levels: Vec<f64> = self
+            .ground_occupations()
+            .iter()
+            .map(|&n| f64::from(n) * total)
+            .collect();
+        for (level, flow) in flows.iter().map(CompensatedSum::value).enumerate() {
+            levels[level] -= flow;
+            if let Some(next) = levels.get_mut(level + 1) {
+                *next += flow;
+            }
         }
         let mut occupations = vec![0.0; levels.len()];
         for (level, &mode) in self.order.iter().enumerate() {
