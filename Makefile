@@ -9,7 +9,7 @@ export MPLBACKEND := Agg
 
 SOURCES := Cargo.toml Cargo.lock pyproject.toml README.md \
            $(shell find src python -type f ! -name '*.pyc' ! -name '*.so')
-PYTHON_SOURCES := python tests demo benches tools
+PYTHON_SOURCES := python tests demo benches
 
 .PHONY: env demo test bench bench-large lint format test-rust test-python docs-rust wheel clean
 
@@ -60,7 +60,8 @@ docs-rust:
 
 # the installed wheel, not the source tree
 test-python: env
-	cd tests && python -m mypy.stubtest fockhull
+	cd tests && python -m mypy.stubtest --mypy-config-file ../pyproject.toml \
+	    --allowlist ../tools/stubtest-allowed.txt fockhull
 	pytest --quiet tests
 	pytest --quiet --doctest-modules --pyargs fockhull
 	pytest --quiet --doctest-glob='*.md' README.md

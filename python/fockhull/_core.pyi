@@ -6,6 +6,20 @@ from typing import Any, TypeAlias, final
 import numpy as np
 import numpy.typing as npt
 
+__all__ = [
+    "ExclusionPolytope",
+    "Hamiltonian",
+    "Interaction",
+    "Levels",
+    "Projections",
+    "Sector",
+    "__version__",
+    "checked_weights",
+    "density_matrices",
+    "lowest_levels",
+    "spin_squared",
+]
+
 __version__: str
 
 _Real: TypeAlias = npt.NDArray[np.float64]

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import itertools
 import warnings
 from collections.abc import Callable
 from dataclasses import dataclass
@@ -122,19 +123,24 @@ class Ensemble:
 
     @property
     def vectors(self) -> ScalarArray:
-        """States as columns, shape (dimension, r); the first component within 1e-8 of the
-        largest is real and positive."""
+        """States as columns, shape (dimension, r).
+
+        The first component within 1e-8 of the largest is real and positive.
+        """
         return self._levels.rows[: self._count].T
 
     @property
     def residuals(self) -> RealArray:
-        """Residual norms \\|H x - E x\\|, shape (r,)."""
+        """Residual norms of H x - E x, shape (r,)."""
         return self._levels.residuals[: self._count]
 
     @property
     def error_bounds(self) -> RealArray:
-        """Bounds on the error of each energy, shape (r,): the residual norm, or its square over
-        the gap (Kato and Temple) where that is smaller and the level count was checked."""
+        """Bounds on the error of each energy, shape (r,).
+
+        The residual norm, or its square over the gap (Kato and Temple) where that is smaller and
+        the level count was checked.
+        """
         return self._levels.error_bounds[: self._count]
 
     @property
@@ -159,13 +165,13 @@ class Ensemble:
 
     @property
     def method(self) -> str:
-        """"dense" or "block Lanczos"."""
+        """How the levels were found: "dense" or "block Lanczos"."""
         return self._levels.method
 
     @property
     def excitation_energies(self) -> RealArray:
         """E_j - E_1, shape (r,)."""
-        return self.energies - self.energies[0]
+        return np.asarray(self.energies - self.energies[0])
 
     @property
     def energy(self) -> float:
@@ -186,8 +192,10 @@ class Ensemble:
 
     @cached_property
     def state_density_matrices(self) -> ScalarArray:
-        """One-body density matrices <a+_q a_p> of the states, shape (r, d, d), or (r, 2, d, d)
-        for spin-1/2."""
+        """One-body density matrices <a+_q a_p> of the states.
+
+        Shape (r, d, d), or (r, 2, d, d) for spin-1/2.
+        """
         rows = self._levels.rows[: self._count]
         sector = self._hamiltonian.sector
         gamma = _core.density_matrices(sector._core, np.ascontiguousarray(rows))
@@ -197,8 +205,10 @@ class Ensemble:
 
     @cached_property
     def density_matrix(self) -> ScalarArray:
-        """Ensemble density matrix gamma_pq = sum_j w_j <a+_q a_p>_j, shape (d, d), or (2, d, d)
-        for spin-1/2. The one-body energy is Tr(h gamma), the trace is N."""
+        """Ensemble density matrix gamma_pq = sum_j w_j <a+_q a_p>_j.
+
+        Shape (d, d), or (2, d, d) for spin-1/2; the one-body energy is Tr(h gamma), the trace N.
+        """
         gamma = np.tensordot(self._required_weights(), self.state_density_matrices, axes=1)
         gamma.flags.writeable = False
         return gamma
@@ -223,13 +233,15 @@ class Ensemble:
 
     @property
     def natural_orbitals(self) -> ScalarArray:
-        """Natural orbitals as columns in the order of `occupations`, shape (d, d) or (2, d, d);
-        arbitrary inside the blocks that `degenerate_occupations` lists."""
+        """Natural orbitals as columns in the order of `occupations`, shape (d, d) or (2, d, d).
+
+        Arbitrary inside the blocks that `degenerate_occupations` lists.
+        """
         return self._natural[1]
 
     @property
     def degenerate_occupations(self) -> tuple[Any, ...]:
-        """Ranges (start, stop) of occupations equal within 1e-8; for spin-1/2 one list a spin."""
+        """Ranges (start, stop) of occupations equal within 1e-8; for spin-1/2 a tuple each."""
         blocks = tuple(_equal_runs(row) for row in np.atleast_2d(self.occupations))
         return blocks if self._hamiltonian.sector.spins == 2 else blocks[0]
 
@@ -437,7 +449,11 @@ def solve(
         expected = f"at most {hamiltonian.dimension}, the dimension of the sector"
         raise ArgumentError(name, f"{count} levels", expected)
     tolerance = arguments.positive("tol", tol)
-    limit = 5000 + 500 * count if max_products is None else arguments.count("max_products", max_products)
+    limit = (
+        5000 + 500 * count
+        if max_products is None
+        else arguments.count("max_products", max_products)
+    )
     with _reporter(progress) as report:
         found = _core.lowest_levels(
             hamiltonian._core,
@@ -506,11 +522,14 @@ def _warned(ensemble: Ensemble) -> Ensemble:
         energies = ensemble._levels.energies[start:stop]
         weights = ensemble.weights
         assert weights is not None
-        shown = [f"{w:.6g}" for w in weights[start:stop]] + ["0"] * (stop - max(start, len(weights)))
+        shown = [f"{w:.6g}" for w in weights[start:stop]] + ["0"] * (
+            stop - max(start, len(weights))
+        )
         warnings.warn(
-            f"levels {start + 1} to {stop} are degenerate (energy {energies.mean():.10g}, spread "
-            f"{np.ptp(energies):.1e}) but carry the weights {', '.join(shown)}: the ensemble energy "
-            "is unique, the density matrix is not; symmetrized() gives the symmetric choice",
+            f"levels {start + 1} to {stop} are degenerate (energy {energies.mean():.10g}, "
+            f"spread {np.ptp(energies):.1e}) but carry the weights {', '.join(shown)}: the "
+            "ensemble energy is unique, the density matrix is not; symmetrized() gives the "
+            "symmetric one",
             CutMultipletWarning,
             stacklevel=3,
         )
@@ -521,7 +540,7 @@ def _equal_runs(values: RealArray) -> tuple[tuple[int, int], ...]:
     """Ranges of neighbouring values that are equal within the tolerance, longer than one."""
     breaks = np.flatnonzero(-np.diff(values) > OCCUPATION_TOLERANCE) + 1
     edges = [0, *breaks.tolist(), len(values)]
-    return tuple((a, b) for a, b in zip(edges, edges[1:], strict=False) if b - a > 1)
+    return tuple((a, b) for a, b in itertools.pairwise(edges) if b - a > 1)
 
 
 class _reporter:  # noqa: N801

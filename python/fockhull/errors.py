@@ -23,7 +23,7 @@ class FockhullError(Exception):
     """Root of everything that fockhull raises on purpose."""
 
 
-class _Refusal(FockhullError):
+class _RefusalError(FockhullError):
     """Says which argument was refused, what came and what is expected."""
 
     def __init__(self, argument: str, given: object, expected: str) -> None:
@@ -36,7 +36,7 @@ class _Refusal(FockhullError):
         return type(self), (self.argument, self.given, self.expected)
 
 
-class ArgumentError(_Refusal, ValueError):
+class ArgumentError(_RefusalError, ValueError):
     """A value that the function does not accept."""
 
 
@@ -44,7 +44,7 @@ class ArgumentIndexError(ArgumentError, IndexError):
     """An index out of its range."""
 
 
-class ArgumentTypeError(_Refusal, TypeError):
+class ArgumentTypeError(_RefusalError, TypeError):
     """An argument of a wrong type."""
 
 

@@ -261,9 +261,7 @@ def _fitting(
     if not isinstance(out, np.ndarray):
         raise ArgumentTypeError("out", type(out).__name__, "a NumPy array")
     if out.shape != shape or out.dtype != dtype or not out.flags.writeable:
-        given = f"shape {out.shape} of {out.dtype}" + (
-            "" if out.flags.writeable else ", read-only"
-        )
+        given = f"shape {out.shape} of {out.dtype}" + ("" if out.flags.writeable else ", read-only")
         raise ArgumentError("out", given, f"a writable array of shape {shape} of {dtype}")
     if np.may_share_memory(out, vectors):
         raise ArgumentError("out", "an array that shares memory with x", "a separate array")

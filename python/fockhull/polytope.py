@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 from functools import cached_property
-from typing import Any, Literal, NamedTuple, TypeAlias
+from typing import Any, Literal, NamedTuple, TypeAlias, TypeVar, cast
 
 import numpy as np
 import numpy.typing as npt
@@ -31,7 +31,8 @@ __all__ = [
 
 RealArray: TypeAlias = npt.NDArray[np.float64]
 ScalarArray: TypeAlias = npt.NDArray[np.float64 | np.complex128]
-Domain: TypeAlias = Literal["spin-resolved", "spin-summed"]
+
+_Numbers = TypeVar("_Numbers", bound=npt.NDArray[Any])
 
 VERIFY_TOLERANCE = 1e-9
 
@@ -54,8 +55,11 @@ class Stretch:
     """
 
     value: Any
-    """The factor (an upper bound, proved by `normal`); infinite at the centre, zero elsewhere
-    if the polytope is a single point. A float, or an array over the batch."""
+    """The factor (an upper bound, proved by `normal`).
+
+    Infinite at the centre, zero elsewhere if the polytope is a single point. A float, or an array
+    over the batch.
+    """
     lower: Any
     """Certified lower bound of the factor."""
     boundary: RealArray
@@ -122,7 +126,7 @@ class ConfigurationEnsemble:
         return len(self._line_up_probabilities) * len(self._permutation_probabilities)
 
     def configurations(self, term: int) -> npt.NDArray[np.int64]:
-        """Configurations of a term in the order of the weights.
+        """Write out the configurations of a term in the order of the weights.
 
         Returns
         -------
@@ -145,10 +149,11 @@ class ConfigurationEnsemble:
         energies = potential if self._domain == "spin-resolved" else potential[0]
         return self._sector.lowest_configurations(energies, len(self._weights)).occupations
 
-    def _permuted(self, values: Any, order: npt.NDArray[np.int64]) -> Any:
+    def _permuted(self, values: _Numbers, order: npt.NDArray[np.int64]) -> _Numbers:
         if len(order) == 1:
-            return values[..., order[0]]
-        return np.stack([values[..., s, order[s]] for s in range(len(order))], axis=-2)
+            return cast(_Numbers, values[..., order[0]])
+        rows = [values[..., s, order[s]] for s in range(len(order))]
+        return cast(_Numbers, np.stack(rows, axis=-2))
 
     def occupations(self) -> RealArray:
         """Occupations of the mixture, recomputed from its configurations."""
@@ -239,13 +244,16 @@ class Projection:
 
     @cached_property
     def occupations(self) -> RealArray:
-        """The nearest occupations: in the caller's order of modes, or decreasing (those of the
-        natural orbitals) if a density matrix was projected."""
+        """The nearest occupations.
+
+        In the caller's order of modes, or decreasing (those of the natural orbitals) if a
+        density matrix was projected.
+        """
         return self._shaped(self._core.occupations)
 
     @cached_property
     def normal(self) -> RealArray:
-        """h = nearest occupations minus those given; outside it separates: f_w(h) > <h, n>."""
+        """Nearest occupations minus those given, h; outside it separates: f_w(h) > <h, n>."""
         return self._shaped(self._core.normals)
 
     @property
@@ -339,7 +347,10 @@ class ExclusionPolytope:
     __slots__ = ("_core", "_domain", "_sector", "_weights")
 
     def __init__(
-        self, sector: Sector, weights: npt.ArrayLike, domain: Domain | None = None
+        self,
+        sector: Sector,
+        weights: npt.ArrayLike,
+        domain: Literal["spin-resolved", "spin-summed"] | None = None,
     ) -> None:
         if not isinstance(sector, Sector):
             raise ArgumentTypeError("sector", type(sector).__name__, "a sector of fockhull")
@@ -424,7 +435,7 @@ class ExclusionPolytope:
         *,
         occupations: npt.ArrayLike | None = None,
     ) -> Projection:
-        """Find the nearest allowed density matrix (Frobenius norm) or occupations.
+        r"""Find the nearest allowed density matrix (Frobenius norm) or occupations.
 
         A density matrix keeps its natural orbitals. A sum of occupations that differs from the
         particle number is corrected as well: the excess is taken off uniformly over the modes,
@@ -513,6 +524,7 @@ class ExclusionPolytope:
         if occupations is not None:
             values = arguments.reals("occupations", occupations)
             return *self._batch("occupations", values), None
+        assert density_matrix is not None
         gamma = arguments.scalars("density_matrix", density_matrix)
         shape = (*self.shape, self._sector.modes)
         if gamma.shape[-len(shape) :] != shape:

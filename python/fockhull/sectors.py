@@ -16,7 +16,7 @@ import numpy as np
 import numpy.typing as npt
 
 from fockhull import _arguments as arguments
-from fockhull import _core
+from fockhull import _core as compiled
 from fockhull._html import table
 from fockhull.errors import ArgumentError, ArgumentTypeError
 
@@ -40,7 +40,7 @@ class LowestConfigurations(NamedTuple):
 class Sector(ABC):
     """What all sectors have in common; use `Fermions`, `SpinHalfFermions` or `Bosons`."""
 
-    _core: _core.Sector
+    _core: compiled.Sector
 
     modes: int
     """Number of modes (orbitals, sites)."""
@@ -49,6 +49,9 @@ class Sector(ABC):
     @abstractmethod
     def shape(self) -> tuple[int, ...]:
         """Shape of the occupations of one configuration."""
+
+    particles: int | tuple[int, int]
+    """Number of particles; for spin-1/2 (up, down)."""
 
     @property
     @abstractmethod
@@ -66,7 +69,7 @@ class Sector(ABC):
         return self._core.dimension
 
     def occupations(self, index: npt.ArrayLike) -> IntegerArray:
-        """Occupations of the configurations with the given indices.
+        """Write out the occupations of the configurations with the given indices.
 
         Parameters
         ----------
@@ -90,7 +93,7 @@ class Sector(ABC):
         return rows.reshape(indices.shape + self.shape)
 
     def index(self, occupations: npt.ArrayLike) -> int | npt.NDArray[np.uint64]:
-        """Indices of the configurations with the given occupations.
+        """Find the indices of the configurations with the given occupations.
 
         Parameters
         ----------
@@ -185,7 +188,7 @@ class _SpinlessSector(Sector):
 
     modes: int
     particles: int
-    _core: _core.Sector = field(init=False, compare=False)
+    _core: compiled.Sector = field(init=False, compare=False)
 
     def __post_init__(self) -> None:
         _set(self, "modes", arguments.count("modes", self.modes))
@@ -193,7 +196,7 @@ class _SpinlessSector(Sector):
         _set(self, "_core", self._build())
 
     @abstractmethod
-    def _build(self) -> _core.Sector: ...
+    def _build(self) -> compiled.Sector: ...
 
     @property
     def shape(self) -> tuple[int, ...]:
@@ -237,8 +240,8 @@ class Fermions(_SpinlessSector):
     array([0, 0, 1, 1])
     """
 
-    def _build(self) -> _core.Sector:
-        return _core.Sector.fermions(self.modes, self.particles)
+    def _build(self) -> compiled.Sector:
+        return compiled.Sector.fermions(self.modes, self.particles)
 
 
 class Bosons(_SpinlessSector):
@@ -264,8 +267,8 @@ class Bosons(_SpinlessSector):
     [[2, 0, 0], [1, 1, 0], [0, 2, 0]]
     """
 
-    def _build(self) -> _core.Sector:
-        return _core.Sector.bosons(self.modes, self.particles)
+    def _build(self) -> compiled.Sector:
+        return compiled.Sector.bosons(self.modes, self.particles)
 
 
 @dataclass(frozen=True, repr=False)
@@ -294,7 +297,7 @@ class SpinHalfFermions(Sector):
     orbitals: int
     particles: tuple[int, int]
     modes: int = field(init=False, compare=False)
-    _core: _core.Sector = field(init=False, compare=False)
+    _core: compiled.Sector = field(init=False, compare=False)
 
     def __post_init__(self) -> None:
         _set(self, "orbitals", arguments.count("orbitals", self.orbitals))
@@ -304,7 +307,7 @@ class SpinHalfFermions(Sector):
             raise ArgumentTypeError("particles", repr(given), "a pair of integers (up, down)")
         up, down = (arguments.count("particles", n, minimum=0) for n in given)
         _set(self, "particles", (up, down))
-        _set(self, "_core", _core.Sector.spin_half(self.orbitals, up, down))
+        _set(self, "_core", compiled.Sector.spin_half(self.orbitals, up, down))
 
     @property
     def shape(self) -> tuple[int, ...]:

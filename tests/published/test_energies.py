@@ -8,11 +8,12 @@ from __future__ import annotations
 
 from typing import Any
 
-import fockhull as fh
 import numpy as np
 import numpy.typing as npt
 import pytest
 from numpy.testing import assert_allclose
+
+import fockhull as fh
 from reference import closed_forms as forms
 
 Array = npt.NDArray[Any]

@@ -22,7 +22,8 @@ R = 1.4
 @pytest.fixture(scope="module")
 def script() -> ModuleType:
     spec = importlib.util.spec_from_file_location(SCRIPT.stem, SCRIPT)
-    assert spec is not None and spec.loader is not None
+    assert spec is not None
+    assert spec.loader is not None
     module = importlib.util.module_from_spec(spec)
     spec.loader.exec_module(module)
     return module

@@ -175,7 +175,8 @@ def test_arguments_are_left_alone() -> None:
     couplings.screened(r, 1.0, 1.0)[:] = -1.0
     couplings.long_range(r, 1.0)[:] = -1.0
     couplings.pairing(2, g)[1][:] = -1.0
-    assert np.array_equal(r, r_before) and np.array_equal(g, g_before)
+    assert np.array_equal(r, r_before)
+    assert np.array_equal(g, g_before)
 
 
 R = [[0.0, 1.0], [1.0, 0.0]]

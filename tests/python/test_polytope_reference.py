@@ -4,11 +4,12 @@ from __future__ import annotations
 
 from typing import Any
 
-import fockhull as fh
 import numpy as np
 import numpy.typing as npt
 import pytest
 from numpy.testing import assert_allclose
+
+import fockhull as fh
 from reference.fock import ReferenceSector, bosons, fermions, spin_half
 from reference.polytope import ReferencePolytope
 from reference.random_problems import (
