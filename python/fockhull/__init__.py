@@ -4,6 +4,9 @@ Give it one-body terms, an interaction and weights; get ensemble energies with e
 one-body density matrices, natural occupations, and the verdict of the exclusion polytope.
 """
 
+from importlib import import_module
+from typing import TYPE_CHECKING, Any
+
 from fockhull import couplings, errors, lattices
 from fockhull._core import __version__
 from fockhull.ensemble import Ensemble, LevelCount, SolveProgress, solve
@@ -35,4 +38,27 @@ __all__ = [
     "errors",
     "lattices",
     "solve",
+    "sweep",
+    "sweeps",
 ]
+
+if TYPE_CHECKING:
+    from fockhull import sweeps
+    from fockhull.sweeps import sweep
+
+# loaded when first asked for: they import xarray and more
+_LAZY = {"sweep": ("fockhull.sweeps", "sweep"), "sweeps": ("fockhull.sweeps", None)}
+
+
+def __getattr__(name: str) -> Any:
+    if name not in _LAZY:
+        raise AttributeError(f"module 'fockhull' has no attribute {name!r}")
+    module, member = _LAZY[name]
+    loaded = import_module(module)
+    value = loaded if member is None else getattr(loaded, member)
+    globals()[name] = value
+    return value
+
+
+def __dir__() -> list[str]:
+    return sorted(__all__)

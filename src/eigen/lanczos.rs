@@ -13,6 +13,9 @@ use ndarray::{Array2, ArrayView2, ArrayViewMut2, s};
 use rand::SeedableRng;
 use rand_chacha::ChaCha8Rng;
 
+/// Weight of the random vector that joins given starts: it must reach what they do not contain.
+const RANDOM_PART: f64 = 0.01;
+
 /// Ritz pairs of the basis as it stands: levels, coefficients in columns, residual norms.
 #[derive(Clone)]
 pub(super) struct Ritz<T> {
@@ -111,6 +114,7 @@ impl<'a, T: Scalar> BlockLanczos<'a, T> {
     ) -> (ArrayView2<'_, T>, ArrayViewMut2<'_, T>) {
         let (n, total) = (self.dimension, rows + extra);
         if self.storage.len() < total * n {
+            self.storage.reserve_exact(total * n - self.storage.len());
             self.storage.resize(total * n, T::zero());
         }
         let (head, tail) = self.storage.split_at_mut(rows * n);
@@ -120,27 +124,28 @@ impl<'a, T: Scalar> BlockLanczos<'a, T> {
         (head, tail)
     }
 
-    /// Begins anew in the complement of the first `locked` rows, with `width` rows: those of
-    /// `start`, then random ones from `generator`.
+    /// Begins anew in the complement of the first `locked` rows, with `width` random rows from
+    /// `generator`; the first of them is mixed with the sum of the rows of `start`.
     pub fn begin(
         &mut self,
         locked: usize,
         width: usize,
-        start: ArrayView2<'_, T>,
+        start: Option<ArrayView2<'_, T>>,
         mut generator: ChaCha8Rng,
     ) -> Result<()> {
-        let given = start.nrows().min(width);
         let (basis, mut block) = self.split(locked, width);
-        for (k, mut row) in block.rows_mut().into_iter().enumerate() {
-            if k < given {
-                row.assign(&start.row(k));
-                let norm = row.iter().map(|x| x.abs_sqr()).sum::<f64>().sqrt();
-                if norm > 0.0 {
-                    row.mapv_inplace(|x| x * (1.0 / norm));
-                }
+        for row in block.rows_mut() {
+            fill_random(row, &mut generator);
+        }
+        let mut first = block.row_mut(0);
+        for given in start.iter().flat_map(|start| start.rows()) {
+            let norm = given.iter().map(|x| x.abs_sqr()).sum::<f64>().sqrt();
+            let weight = T::from_real(if norm > 0.0 {
+                1.0 / (RANDOM_PART * norm)
             } else {
-                fill_random(row, &mut generator);
-            }
+                0.0
+            });
+            first.zip_mut_with(&given, |x, &y| *x += weight * y);
         }
         let purge = Purge {
             first_expected: 0,

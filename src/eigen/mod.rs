@@ -4,6 +4,7 @@
 //! block Lanczos iteration with thick restarts, followed by a search for missed levels in the
 //! orthogonal complement of what was found.
 
+mod certify;
 mod dense;
 mod lanczos;
 mod multiplet;
@@ -35,7 +36,7 @@ pub struct LevelRequest<'a, T> {
     /// first block is always multiplied).
     pub max_products: usize,
     /// Bytes for the basis; 0 stands for what the iteration likes (about 24 vectors for a few
-    /// levels, 2r + 10 for many).
+    /// levels, 2r + 6 for many).
     pub memory_limit: usize,
     /// Dimension up to which a dense matrix is diagonalised.
     pub dense_limit: usize,
@@ -97,7 +98,8 @@ pub struct Levels<T> {
     pub error_bounds: Array1<f64>,
     /// The first level above the last multiplet; none if there is none or it was not found.
     pub next_energy: Option<f64>,
-    /// Its residual norm, which bounds its error; looked-ahead levels are less converged.
+    /// Its residual norm, which bounds its error. Looking ahead stops at a residual norm of
+    /// sqrt(tolerance) (1e-3 at most) relative to the levels, and of a tenth of the gap.
     pub next_error: Option<f64>,
     /// Ranges of levels that are equal within tolerance.
     pub multiplets: Vec<Range<usize>>,

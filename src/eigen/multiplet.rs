@@ -66,7 +66,9 @@ impl Goal {
         let r = self.levels;
         if let Some(Required { bound, count }) = required {
             let seen = levels.iter().filter(|level| level.energy <= bound).count();
-            if seen < count {
+            // converged levels above the bound would refute the claim
+            let refuted = levels.len() >= count && levels[..count].iter().all(converged);
+            if seen < count && !refuted {
                 return Assessment::Unfinished {
                     wanted: r.max(count),
                 };
@@ -248,7 +250,8 @@ mod tests {
 
     #[test]
     fn a_missed_level_keeps_the_search_going() {
-        let levels = [0.0, 1.0, 2.0].map(|energy| level(energy, 0.0));
+        let mut levels = [0.0, 1.0, 2.0].map(|energy| level(energy, 0.0));
+        levels[2].residual = 0.1;
         let required = Some(Required {
             bound: 1.5,
             count: 3,

@@ -16,8 +16,10 @@ use rand::Rng;
 
 /// Columns handled at once: two dozen rows of them fit in a second-level cache.
 const CHUNK: usize = 4096;
+/// Smallest Gram eigenvalue, relative to the block before, that Pythagoras' theorem predicts well.
+const PREDICTABLE: f64 = 1e-3;
 /// Largest overlap with the basis, and deviation of a Gram matrix from one, that passes.
-const ORTHOGONALITY: f64 = 1e-12;
+pub(super) const ORTHOGONALITY: f64 = 1e-12;
 /// Ratio of Gram eigenvalues beyond which overlaps are measured anew, not predicted.
 const WELL_CONDITIONED: f64 = 1e-6;
 /// Sweeps after which a block is taken as it is.
@@ -52,13 +54,18 @@ fn conjugate_product<T: Scalar>(left: ArrayView2<'_, T>, right: ArrayView2<'_, T
     out
 }
 
+/// The overlaps <v_i, w_a> and the Gram matrix <w_a, w_b>.
+fn measure<T: Scalar>(basis: ArrayView2<'_, T>, block: ArrayView2<'_, T>) -> Measured<T> {
+    let partial: Vec<_> = chunks(basis)
+        .zip(chunks(block))
+        .map(|(v, w)| (conjugate_product(v, w), conjugate_product(w, w)))
+        .collect();
+    total(partial, basis.nrows(), block.nrows())
+}
+
 /// The overlaps <v_i, w_a>.
 pub(super) fn overlaps<T: Scalar>(basis: ArrayView2<'_, T>, block: ArrayView2<'_, T>) -> Array2<T> {
-    let partial: Vec<Array2<T>> = chunks(basis)
-        .zip(chunks(block))
-        .map(|(v, w)| conjugate_product(v, w))
-        .collect();
-    sum(partial, (basis.nrows(), block.nrows()))
+    measure(basis, block).overlaps
 }
 
 fn chunks<T: Scalar>(
@@ -71,10 +78,22 @@ fn chunks<T: Scalar>(
     })
 }
 
-fn sum<T: Scalar>(partial: Vec<Array2<T>>, shape: (usize, usize)) -> Array2<T> {
+/// Adds what the chunks measured, in their order.
+fn total<T: Scalar>(
+    partial: Vec<(Array2<T>, Array2<T>)>,
+    rows: usize,
+    width: usize,
+) -> Measured<T> {
+    let zero = Measured {
+        overlaps: Array2::zeros((rows, width)),
+        gram: Array2::zeros((width, width)),
+    };
     partial
         .into_iter()
-        .fold(Array2::zeros(shape), |total, part| total + part)
+        .fold(zero, |sum, (overlaps, gram)| Measured {
+            overlaps: sum.overlaps + overlaps,
+            gram: sum.gram + gram,
+        })
 }
 
 /// Product of small matrices, on the calling thread, into `out`.
@@ -128,11 +147,7 @@ fn sweep<T: Scalar>(
             (overlaps, conjugate_product(w.view(), w.view()))
         })
         .collect();
-    let (overlaps, grams): (Vec<_>, Vec<_>) = partial.into_iter().unzip();
-    Measured {
-        overlaps: sum(overlaps, (rows, width)),
-        gram: sum(grams, (width, width)),
-    }
+    total(partial, rows, width)
 }
 
 /// Subtracts from the block its part inside the basis, once; its overlaps with the basis before
@@ -164,11 +179,28 @@ struct Whitening<T> {
     transform: Array2<T>,
     /// N with W = N^T (M W) for the rows kept.
     inverse: Array2<T>,
-    /// Smallest over largest Gram eigenvalue.
+    /// Smallest Gram eigenvalue.
+    smallest: f64,
+    /// The same over the largest.
     condition: f64,
 }
 
 impl<T: Scalar> Whitening<T> {
+    /// From what is known before the part inside the basis is subtracted, by Pythagoras'
+    /// theorem; none if cancellation spoils it.
+    fn predicted(before: &Measured<T>, room: usize) -> Result<Option<Self>> {
+        let inside = &before.overlaps;
+        let gram = &before.gram - &conjugate_product(inside.t(), inside.t());
+        let whitening = Whitening::new(&gram, room)?;
+        let top = before
+            .gram
+            .diag()
+            .iter()
+            .fold(0.0, |top: f64, x| top.max(x.re()));
+        let safe = whitening.smallest > PREDICTABLE * top;
+        Ok((safe && whitening.transform.nrows() == gram.nrows()).then_some(whitening))
+    }
+
     /// Keeps the `room` strongest directions.
     fn new(gram: &Array2<T>, room: usize) -> Result<Self> {
         if gram.iter().any(|value| !value.is_finite()) {
@@ -194,6 +226,7 @@ impl<T: Scalar> Whitening<T> {
         Ok(Whitening {
             transform: scaled(directions.to_owned(), &inverse_size),
             inverse: scaled(directions.mapv(T::conj), &|size| size),
+            smallest: eigen.values.first().copied().unwrap_or(0.0),
             condition: if top > 0.0 {
                 eigen.values[0] / top
             } else {
@@ -261,12 +294,33 @@ pub(super) fn orthonormalize<T: Scalar, R: Rng>(
     generator: &mut R,
 ) -> Result<Split<T>> {
     let room = basis.ncols() - basis.nrows();
-    let expected = overlaps(basis.slice(s![purge.first_expected.., ..]), block.view());
+    let expected = measure(basis.slice(s![purge.first_expected.., ..]), block.view());
     let mut inside = Array2::zeros((basis.nrows(), block.nrows()));
     let mut rows = inside.slice_mut(s![purge.first_expected.., ..]);
-    rows.assign(&expected);
+    rows.assign(&expected.overlaps);
     let mut outside = Array2::<T>::eye(block.nrows());
-    let mut measured = sweep(basis, block.view_mut(), None, Some(&expected), true);
+    let mut measured = match Whitening::predicted(&expected, room)? {
+        Some(Whitening {
+            transform, inverse, ..
+        }) => {
+            outside = inverse;
+            let subtract = expected.overlaps.dot(&transform.t());
+            sweep(
+                basis,
+                block.view_mut(),
+                Some(&transform),
+                Some(&subtract),
+                true,
+            )
+        }
+        None => sweep(
+            basis,
+            block.view_mut(),
+            None,
+            Some(&expected.overlaps),
+            true,
+        ),
+    };
     for count in 0..MOST_SWEEPS {
         let whitening = Whitening::new(&measured.gram, room)?;
         let remaining = measured.overlaps.dot(&whitening.transform.t());
@@ -292,4 +346,77 @@ pub(super) fn orthonormalize<T: Scalar, R: Rng>(
         }
     }
     Ok(Split { inside, outside })
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+    use num_complex::Complex64;
+    use rand::SeedableRng;
+    use rand_chacha::ChaCha8Rng;
+
+    fn random<T: Scalar>(rows: usize, n: usize, generator: &mut ChaCha8Rng) -> Array2<T> {
+        let mut out = Array2::zeros((rows, n));
+        for row in out.rows_mut() {
+            fill_random(row, generator);
+        }
+        out
+    }
+
+    /// Splits `block` against `basis`; checks orthonormality and W = C^T V + B^T Q.
+    fn check<T: Scalar>(basis: &Array2<T>, block: &Array2<T>) -> Split<T> {
+        let mut generator = ChaCha8Rng::seed_from_u64(2);
+        let purge = Purge {
+            first_expected: 0,
+            noise: 1e-15,
+        };
+        let mut rows = block.clone();
+        let split = orthonormalize(basis.view(), rows.view_mut(), &purge, &mut generator).unwrap();
+        let new = rows.slice(s![..split.outside.nrows(), ..]);
+        assert!(deviation_from_one(&overlaps(new, new)) < 2e-12);
+        assert!(largest(&overlaps(basis.view(), new)) < 2e-12);
+        let rebuilt = split.inside.t().dot(basis) + split.outside.t().dot(&new);
+        assert!(largest(&(&rebuilt - block)) < 1e-13);
+        split
+    }
+
+    fn cases<T: Scalar>() {
+        let mut generator = ChaCha8Rng::seed_from_u64(1);
+        let (n, none) = (2 * CHUNK + 17, Array2::zeros((0, 2 * CHUNK + 17)));
+        let mut basis = random::<T>(3, n, &mut generator);
+        let purge = Purge {
+            first_expected: 0,
+            noise: 0.0,
+        };
+        orthonormalize(none.view(), basis.view_mut(), &purge, &mut generator).unwrap();
+        let block = random::<T>(4, n, &mut generator);
+        assert_eq!(check(&basis, &block).outside.nrows(), 4);
+        // nearly inside the basis: cancellation in most digits
+        let inside = random::<T>(4, 3, &mut generator).dot(&basis);
+        check(&basis, &(&inside + &(&block * T::from_real(1e-9))));
+        // dependent rows, and rows inside the basis or zero, give way to random ones
+        let mut poor = block.clone();
+        let twice = &poor.row(0) * T::from_real(2.0) + inside.row(0);
+        poor.row_mut(1).assign(&twice);
+        poor.row_mut(2).assign(&basis.row(1));
+        poor.row_mut(3).fill(T::zero());
+        assert_eq!(check(&basis, &poor).outside.nrows(), 4);
+        check(&basis, &Array2::zeros((2, n)));
+    }
+
+    #[test]
+    fn blocks_of_any_rank_are_split() {
+        cases::<f64>();
+        cases::<Complex64>();
+    }
+
+    #[test]
+    fn a_full_space_has_no_room() {
+        let mut generator = ChaCha8Rng::seed_from_u64(3);
+        let basis = Array2::<f64>::eye(5).slice(s![..4, ..]).to_owned();
+        let block = random::<f64>(3, 5, &mut generator);
+        assert_eq!(check(&basis, &block).outside.nrows(), 1);
+        let block = random::<f64>(2, 5, &mut generator);
+        assert_eq!(check(&Array2::eye(5), &block).outside.nrows(), 0);
+    }
 }

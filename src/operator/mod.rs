@@ -13,6 +13,7 @@ mod spin_half;
 mod stored;
 mod symmetry;
 mod terms;
+mod tile;
 mod walker;
 
 pub use hamiltonian::{Hamiltonian, MemoryEstimate};

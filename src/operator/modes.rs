@@ -62,9 +62,10 @@ impl<T: Scalar> ModeOperator<T> {
     }
 
     /// Pushes the rows of a range.
-    pub fn fill_rows(&self, rows: Range<usize>, sink: &mut RowSink<T>) {
+    fn fill_rows(&self, rows: Range<usize>, sink: &mut RowSink<T>) {
         let mut elements = Vec::new();
         self.walk(rows, |row, walker| {
+            // the diagonal is there even where it is zero
             elements.push((row as u32, T::from_real(self.terms.diagonal(walker))));
             // a row is the conjugate of the column that the terms give
             self.terms.visit_off_diagonal(walker, |column, value| {

@@ -1,14 +1,16 @@
 //! Spin-1/2 fermions at fixed (up, down): H = H_up x 1 + 1 x H_down + coupling.
 //!
 //! A vector is a matrix with a row for each up configuration. The down part and the
-//! density-density coupling work on a few rows at a time, transposed so that neighbouring
-//! numbers belong to different rows; the up part works on strips of columns that stay in cache.
+//! density-density coupling work on a tile of rows at a time, transposed so that neighbouring
+//! numbers belong to different rows; the up part works on tiles of columns. Each reads the
+//! vector once, and a tile stays in cache.
 
 use super::coupling::HopCoupling;
 use super::interaction::Interaction;
 use super::modes::ModeOperator;
 use super::stored::{RowSink, SparseMatrix};
 use super::terms::ModeTerms;
+use super::tile::{multiply_tile, transpose_in, transpose_out, with_tile_width};
 use super::walker::ModeSpace;
 use crate::dense::{Conjugate, Threads, multiply};
 use crate::error::Result;
@@ -18,10 +20,6 @@ use ndarray::{Array1, Array2, ArrayView2, ArrayView3, ArrayViewMut2, ArrayViewMu
 use rayon::prelude::*;
 use std::ops::Range;
 
-/// Rows of a tile: two vector registers of eight numbers.
-const TILE: usize = 16;
-/// Bytes of a column strip, within the second-level cache of common processors.
-const STRIP_BYTES: usize = 1 << 19;
 /// Above this fraction of non-zero elements a one-spin matrix is multiplied as a dense one,
 const DENSE_FILL: f64 = 0.1;
 /// unless it has more rows than this.
@@ -92,8 +90,8 @@ impl DensityCoupling {
     }
 
     /// What a down particle in each mode feels from the up configurations of a tile.
-    fn potentials(&self, first: usize, rows: usize) -> Vec<[f64; TILE]> {
-        let mut potentials = vec![[0.0; TILE]; self.matrix.nrows()];
+    fn potentials<const W: usize>(&self, first: usize, rows: usize) -> Vec<[f64; W]> {
+        let mut potentials = vec![[0.0; W]; self.matrix.nrows()];
         for offset in 0..rows {
             for &p in self.up.of(first + offset) {
                 for (potential, &v) in potentials.iter_mut().zip(self.matrix.row(p as usize)) {
@@ -102,6 +100,28 @@ impl DensityCoupling {
             }
         }
         potentials
+    }
+
+    /// The coupling of one down configuration with the up configurations of a tile.
+    #[inline(always)]
+    fn act<T: Scalar, const W: usize>(
+        &self,
+        potentials: &[[f64; W]],
+        down: usize,
+        x: &[T; W],
+    ) -> [T; W] {
+        let mut total = [0.0; W];
+        for &q in self.down.of(down) {
+            let potential = &potentials[q as usize];
+            for k in 0..W {
+                total[k] += potential[k];
+            }
+        }
+        let mut result = [T::zero(); W];
+        for k in 0..W {
+            result[k] = x[k] * total[k];
+        }
+        result
     }
 }
 
@@ -112,7 +132,7 @@ impl<T: Scalar> StringMatrix<T> {
             "the part of the Hamiltonian that acts on one spin",
             operator.estimated_elements()? * element,
         )?;
-        let sparse = operator.to_sparse();
+        let sparse = operator.to_sparse().without_zeros();
         let n = sparse.rows();
         let worthwhile = n > 1 && n <= DENSE_ROWS && sparse.fill() > DENSE_FILL;
         let dense = worthwhile.then(|| {
@@ -174,101 +194,89 @@ impl<T: Scalar> SpinHalfOperator<T> {
 
     /// Overwrites row k of `out` with the product with row k of `block`.
     pub fn apply(&self, block: ArrayView2<'_, T>, mut out: ArrayViewMut2<'_, T>) {
-        match &self.down.dense {
-            None => self.apply_tiles(block, out.view_mut(), Some(&self.down.sparse)),
-            Some(_) => self.apply_tiles(block, out.view_mut(), None),
-        }
         let (up, down) = self.shape();
+        with_tile_width!(up, W => self.apply_down::<W>(block, out.view_mut()));
         let shape = (block.nrows(), up, down);
-        if let (Ok(block), Ok(out)) = (
+        if let (Ok(block), Ok(mut out)) = (
             block.into_shape_with_order(shape),
             out.view_mut().into_shape_with_order(shape),
         ) {
-            self.add_dense_down(block, out);
-        }
-        if let (Ok(block), Ok(out)) = (
-            block.into_shape_with_order(shape),
-            out.view_mut().into_shape_with_order(shape),
-        ) {
-            self.add_up(block, out);
+            self.add_dense_down(block, out.view_mut());
+            match &self.up.dense {
+                Some(dense) => add_dense_up(dense, block, out),
+                None => with_tile_width!(down, W => self.add_up::<W>(block, out)),
+            }
         }
         if let Some(hops) = &self.hops {
             hops.add_to(block, out, down);
         }
     }
 
-    /// The sparse down part (if given) and the density coupling, a tile of rows at a time.
-    fn apply_tiles(
-        &self,
-        block: ArrayView2<'_, T>,
-        mut out: ArrayViewMut2<'_, T>,
-        down: Option<&SparseMatrix<T>>,
-    ) {
+    /// The sparse down part and the density coupling, a tile of rows at a time, transposed.
+    fn apply_down<const W: usize>(&self, block: ArrayView2<'_, T>, mut out: ArrayViewMut2<'_, T>) {
         let width = self.down.sparse.rows();
+        let matrix = self.down.dense.is_none().then_some(&self.down.sparse);
         let arch = pulp::Arch::new();
-        out.axis_chunks_iter_mut(Axis(1), TILE * width)
+        out.axis_chunks_iter_mut(Axis(1), W * width)
             .into_par_iter()
             .enumerate()
             .for_each_init(
-                || {
-                    (
-                        vec![[T::zero(); TILE]; width],
-                        vec![[T::zero(); TILE]; width],
-                    )
-                },
+                || (vec![[T::zero(); W]; width], vec![[T::zero(); W]; width]),
                 |(source, target), (tile, mut part)| {
-                    let first = tile * TILE;
+                    let first = tile * W;
                     let rows = part.ncols() / width;
-                    let potentials = self.density.as_ref().map(|c| c.potentials(first, rows));
+                    let coupling = self.density.as_ref();
+                    let potentials = coupling.map(|c| (c, c.potentials::<W>(first, rows)));
                     for (vector, mut result) in block.rows().into_iter().zip(part.rows_mut()) {
                         let columns = first * width..(first + rows) * width;
                         let input = vector.slice_move(ndarray::s![columns]);
-                        let (Some(input), Some(result)) = (input.as_slice(), result.as_slice_mut())
-                        else {
-                            continue;
-                        };
-                        arch.dispatch(|| {
-                            transpose_in(input, source);
-                            self.fill_tile(down, potentials.as_deref(), source, target);
-                            transpose_out(target, result);
-                        });
+                        if let (Some(input), Some(result)) =
+                            (input.as_slice(), result.as_slice_mut())
+                        {
+                            arch.dispatch(|| {
+                                transpose_in(input, source);
+                                multiply_tile(matrix, source, target, |i, x| match &potentials {
+                                    Some((coupling, potentials)) => coupling.act(potentials, i, x),
+                                    None => [T::zero(); W],
+                                });
+                                transpose_out(target, result);
+                            });
+                        }
                     }
                 },
             );
     }
 
-    /// One transposed tile: target = (down part + density coupling) source.
-    #[inline(always)]
-    fn fill_tile(
-        &self,
-        down: Option<&SparseMatrix<T>>,
-        potentials: Option<&[[f64; TILE]]>,
-        source: &[[T; TILE]],
-        target: &mut [[T; TILE]],
-    ) {
-        for (i, target) in target.iter_mut().enumerate() {
-            let mut sum = [T::zero(); TILE];
-            if let (Some(coupling), Some(potentials)) = (&self.density, potentials) {
-                let mut potential = [0.0; TILE];
-                for &q in coupling.down.of(i) {
-                    for (total, v) in potential.iter_mut().zip(&potentials[q as usize]) {
-                        *total += v;
+    /// The sparse up part, a tile of columns at a time.
+    fn add_up<const W: usize>(&self, block: ArrayView3<'_, T>, mut out: ArrayViewMut3<'_, T>) {
+        let height = self.up.sparse.rows();
+        let arch = pulp::Arch::new();
+        out.axis_chunks_iter_mut(Axis(2), W)
+            .into_par_iter()
+            .enumerate()
+            .for_each_init(
+                || (vec![[T::zero(); W]; height], vec![[T::zero(); W]; height]),
+                |(source, target), (tile, mut part)| {
+                    let columns = tile * W..tile * W + part.len_of(Axis(2));
+                    for (vector, mut result) in block.outer_iter().zip(part.outer_iter_mut()) {
+                        let columns = columns.clone();
+                        arch.dispatch(|| {
+                            for (row, packed) in vector.rows().into_iter().zip(&mut *source) {
+                                if let Some(row) = row.to_slice() {
+                                    packed[..columns.len()].copy_from_slice(&row[columns.clone()]);
+                                }
+                            }
+                            let none = |_: usize, _: &[T; W]| [T::zero(); W];
+                            multiply_tile(Some(&self.up.sparse), source, target, none);
+                            for (mut row, sums) in result.rows_mut().into_iter().zip(&*target) {
+                                for (total, &sum) in row.iter_mut().zip(sums) {
+                                    *total += sum;
+                                }
+                            }
+                        });
                     }
-                }
-                for k in 0..TILE {
-                    sum[k] = source[i][k] * potential[k];
-                }
-            }
-            if let Some(matrix) = down {
-                let (columns, values) = matrix.row(i);
-                for (&j, &value) in columns.iter().zip(values) {
-                    for (total, &x) in sum.iter_mut().zip(&source[j as usize]) {
-                        *total += value * x;
-                    }
-                }
-            }
-            *target = sum;
-        }
+                },
+            );
     }
 
     fn add_dense_down(&self, block: ArrayView3<'_, T>, mut out: ArrayViewMut3<'_, T>) {
@@ -284,62 +292,6 @@ impl<T: Scalar> SpinHalfOperator<T> {
                 result,
                 Threads::All,
             );
-        }
-    }
-
-    fn add_up(&self, block: ArrayView3<'_, T>, mut out: ArrayViewMut3<'_, T>) {
-        if let Some(dense) = &self.up.dense {
-            for (vector, result) in block.outer_iter().zip(out.outer_iter_mut()) {
-                multiply(
-                    T::one(),
-                    (dense.view(), Conjugate::No),
-                    (vector, Conjugate::No),
-                    T::one(),
-                    result,
-                    Threads::All,
-                );
-            }
-            return;
-        }
-        let (up, down) = self.shape();
-        let width = (STRIP_BYTES / (up * size_of::<T>())).next_multiple_of(8);
-        let width = width
-            .min(down.div_ceil(rayon::current_num_threads()))
-            .max(1);
-        let arch = pulp::Arch::new();
-        out.axis_chunks_iter_mut(Axis(2), width)
-            .into_par_iter()
-            .enumerate()
-            .for_each(|(strip, mut part)| {
-                let first = strip * width;
-                let columns = first..first + part.len_of(Axis(2));
-                for (vector, mut result) in block.outer_iter().zip(part.outer_iter_mut()) {
-                    arch.dispatch(|| self.add_up_strip(&vector, &mut result, columns.clone()));
-                }
-            });
-    }
-
-    #[inline(always)]
-    fn add_up_strip(
-        &self,
-        vector: &ArrayView2<'_, T>,
-        result: &mut ArrayViewMut2<'_, T>,
-        columns: Range<usize>,
-    ) {
-        for (i, mut target) in result.rows_mut().into_iter().enumerate() {
-            let Some(target) = target.as_slice_mut() else {
-                continue;
-            };
-            let (sources, values) = self.up.sparse.row(i);
-            for (&j, &value) in sources.iter().zip(values) {
-                let row = vector.row(j as usize);
-                let Some(source) = row.as_slice() else {
-                    continue;
-                };
-                for (t, &x) in target.iter_mut().zip(&source[columns.clone()]) {
-                    *t += value * x;
-                }
-            }
         }
     }
 
@@ -360,9 +312,9 @@ impl<T: Scalar> SpinHalfOperator<T> {
             for (&j, &value) in columns.iter().zip(values) {
                 push(up, j as usize, value);
             }
-            if let Some(coupling) = &self.density {
-                push(up, down, T::from_real(coupling.element(up, down)));
-            }
+            // the diagonal is there even where it is zero
+            let density = self.density.as_ref().map_or(0.0, |c| c.element(up, down));
+            push(up, down, T::from_real(density));
             if let Some(hops) = &self.hops {
                 hops.visit_row(up, down, push);
             }
@@ -391,22 +343,19 @@ impl<T: Scalar> SpinHalfOperator<T> {
     }
 }
 
-#[inline(always)]
-fn transpose_in<T: Scalar>(rows: &[T], columns: &mut [[T; TILE]]) {
-    let width = columns.len();
-    for (offset, row) in rows.chunks_exact(width).enumerate() {
-        for (column, &x) in columns.iter_mut().zip(row) {
-            column[offset] = x;
-        }
-    }
-}
-
-#[inline(always)]
-fn transpose_out<T: Scalar>(columns: &[[T; TILE]], rows: &mut [T]) {
-    let width = columns.len();
-    for (offset, row) in rows.chunks_exact_mut(width).enumerate() {
-        for (x, column) in row.iter_mut().zip(columns) {
-            *x = column[offset];
-        }
+fn add_dense_up<T: Scalar>(
+    dense: &Array2<T>,
+    block: ArrayView3<'_, T>,
+    mut out: ArrayViewMut3<'_, T>,
+) {
+    for (vector, result) in block.outer_iter().zip(out.outer_iter_mut()) {
+        multiply(
+            T::one(),
+            (dense.view(), Conjugate::No),
+            (vector, Conjugate::No),
+            T::one(),
+            result,
+            Threads::All,
+        );
     }
 }

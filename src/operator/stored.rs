@@ -82,6 +82,19 @@ impl<T: Scalar> SparseMatrix<T> {
         matrix
     }
 
+    /// The same matrix without elements that are zero.
+    pub fn without_zeros(self) -> Self {
+        Self::build(self.rows(), |rows, sink| {
+            let mut elements = Vec::new();
+            for row in rows {
+                let (columns, values) = self.row(row);
+                let pairs = columns.iter().copied().zip(values.iter().copied());
+                elements.extend(pairs.filter(|(_, value)| *value != T::zero()));
+                sink.push_row(&mut elements);
+            }
+        })
+    }
+
     /// Number of rows.
     pub fn rows(&self) -> usize {
         self.row_starts.len() - 1

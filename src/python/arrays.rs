@@ -18,11 +18,7 @@ impl<'py, D: Dimension> Numbers<'py, D> {
     pub fn read(array: &Bound<'py, PyAny>) -> PyResult<Self> {
         match array.extract::<PyReadonlyArray<'py, f64, D>>() {
             Ok(real) => Ok(Numbers::Real(real)),
-            Err(_) => Ok(Numbers::Complex(
-                array
-                    .extract::<PyReadonlyArray<'py, Complex64, D>>()
-                    .map_err(PyErr::from)?,
-            )),
+            Err(_) => Ok(Numbers::Complex(array.extract()?)),
         }
     }
 }

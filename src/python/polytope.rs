@@ -28,6 +28,18 @@ pub struct Projections {
     inner: Vec<core::Projection>,
 }
 
+/// Numbers `(batch,)` and occupations `(batch, components, modes)`.
+type Batch<'py> = (Bound<'py, PyArray1<f64>>, Bound<'py, PyArray3<f64>>);
+
+/// Factors, lower bounds, boundary points, normals, words.
+type StretchParts<'py> = (
+    Bound<'py, PyArray1<f64>>,
+    Bound<'py, PyArray1<f64>>,
+    Bound<'py, PyArray3<f64>>,
+    Bound<'py, PyArray3<f64>>,
+    Vec<Option<String>>,
+);
+
 /// An explicit ensemble: mixture of line-ups, times mixture of permutations of modes.
 type EnsembleParts<'py> = (
     Bound<'py, PyArray1<f64>>,
@@ -113,7 +125,7 @@ impl ExclusionPolytope {
         &self,
         py: Python<'py>,
         potentials: PyReadonlyArray3<'py, f64>,
-    ) -> PyResult<(Bound<'py, PyArray1<f64>>, Bound<'py, PyArray3<f64>>)> {
+    ) -> PyResult<Batch<'py>> {
         let potentials = potentials.as_array();
         let found = enter_monitored(py, None, |monitor| {
             for_batch(potentials, monitor, |h| self.inner.support(h))
@@ -152,18 +164,11 @@ impl ExclusionPolytope {
     }
 
     /// Factors, their lower bounds, boundary points, normals and the inequality met in words.
-    #[allow(clippy::type_complexity)]
     fn stretch<'py>(
         &self,
         py: Python<'py>,
         occupations: PyReadonlyArray3<'py, f64>,
-    ) -> PyResult<(
-        Bound<'py, PyArray1<f64>>,
-        Bound<'py, PyArray1<f64>>,
-        Bound<'py, PyArray3<f64>>,
-        Bound<'py, PyArray3<f64>>,
-        Vec<Option<String>>,
-    )> {
+    ) -> PyResult<StretchParts<'py>> {
         let occupations = occupations.as_array();
         let found = enter_monitored(py, None, |monitor| {
             for_batch(occupations, monitor, |n| self.inner.stretch(n))

@@ -10,6 +10,9 @@ use numpy::{
 use pyo3::prelude::*;
 use std::sync::OnceLock;
 
+/// Energies `(r,)` and occupations `(r, spins, modes)`.
+type Lowest<'py> = (Bound<'py, PyArray1<f64>>, Bound<'py, PyArray3<i64>>);
+
 /// A sector of the core; occupations are `(count, spins, modes)` throughout.
 #[pyclass(frozen, module = "fockhull._core")]
 pub struct Sector {
@@ -104,7 +107,7 @@ impl Sector {
         py: Python<'py>,
         energies: PyReadonlyArray2<'py, f64>,
         r: usize,
-    ) -> PyResult<(Bound<'py, PyArray1<f64>>, Bound<'py, PyArray3<i64>>)> {
+    ) -> PyResult<Lowest<'py>> {
         let energies = energies.as_array();
         let (values, occupations) = enter(py, || {
             let lowest = self.inner.lowest_configurations(energies, r)?;
