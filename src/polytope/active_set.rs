@@ -99,6 +99,9 @@ impl<'a> ActiveSet<'a> {
 
     /// Whether an atom takes a share; one that does not is forgotten.
     fn admit(&mut self, atom: Atom) -> bool {
+        if self.atoms.iter().any(|known| known.point == atom.point) {
+            return false;
+        }
         let point = atom.point.clone();
         self.atoms.push(atom);
         self.optimise();
@@ -157,12 +160,14 @@ impl<'a> ActiveSet<'a> {
             if let Blocker::Atom(index) = blocker {
                 self.retired.push(self.atoms.swap_remove(index));
             }
-            self.mix();
             if let Blocker::None = blocker {
                 let idle = self
                     .atoms
                     .extract_if(.., |atom| atom.probability <= ROUNDING);
                 self.retired.extend(idle);
+            }
+            self.mix();
+            if let Blocker::None = blocker {
                 self.normal = normal;
                 let length = dot(&self.normal, &self.normal);
                 if length > 1e-6 * old_length {

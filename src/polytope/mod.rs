@@ -21,6 +21,8 @@ mod monotone;
 mod oracle;
 mod permutahedron;
 mod projection;
+mod search;
+mod sorting;
 mod stretch;
 #[cfg(test)]
 mod tests;

@@ -4,7 +4,9 @@ use super::active_set::remove_mean;
 use super::inequality::Inequality;
 use super::least_squares::dot;
 use super::oracle::Oracle;
-use super::projection::{EarlyStop, ProjectionOptions, Search, Sorting, remove_excess};
+use super::projection::ProjectionOptions;
+use super::search::{EarlyStop, Search};
+use super::sorting::{Sorting, remove_excess};
 use crate::error::{Error, Result};
 use ndarray::{Array2, ArrayView2};
 
@@ -31,6 +33,10 @@ pub struct Stretch {
 const ACCURACY: f64 = 1e-13;
 /// Deviations from the centre below this, relative to the occupations, are rounding.
 const AT_CENTRE: f64 = 1e-14;
+/// Inner radii below this, relative to the occupations, belong to a single point.
+const FIXED: f64 = 1e-12;
+/// Deviations from a single point below this, relative to the occupations, are ignored.
+const NOISE: f64 = 1e-10;
 /// A cut is taken as soon as this share of the distance is certified.
 const SHARE: f64 = 0.99;
 const LARGEST_STEP_COUNT: usize = 200;
@@ -52,8 +58,9 @@ pub(super) fn stretch(
     difference
         .chunks_mut(oracle.shape().1)
         .for_each(remove_mean);
+    let radii = inner_radii(oracle, &centre)?;
+    let movable = hold_fixed(&mut difference, &radii, scale);
     let length = dot(&difference, &difference).sqrt();
-    let radius = inner_radius(oracle, &centre)?;
     let result = |value: f64, lower: f64, shift: f64, normal: &[f64], calls: usize| {
         let point: Vec<f64> = centre
             .iter()
@@ -71,13 +78,12 @@ pub(super) fn stretch(
     };
     let flat = vec![0.0; centre.len()];
     let own_calls = oracle.shape().0;
+    let Some(radius) = movable else {
+        return Ok(result(0.0, 0.0, 0.0, &flat, own_calls));
+    };
     if length <= AT_CENTRE * scale * (centre.len() as f64).sqrt() {
         return Ok(result(f64::INFINITY, f64::INFINITY, 0.0, &flat, own_calls));
     }
-    let radius = match radius.within(&difference, oracle.shape().1, scale) {
-        Some(radius) => radius,
-        None => return Ok(result(0.0, 0.0, 0.0, &flat, own_calls)),
-    };
     let unit: Vec<f64> = difference.iter().map(|d| d / length).collect();
     let exit = leave(oracle, &centre, &unit, radius)?;
     let (value, lower) = (exit.reach / length, exit.reach_lower / length);
@@ -168,22 +174,22 @@ fn leave(oracle: &Oracle, centre: &[f64], unit: &[f64], radius: f64) -> Result<E
     })
 }
 
-/// Radius of a ball about the centre inside the polytope, for each component.
-struct InnerRadius(Vec<f64>);
-
-impl InnerRadius {
-    /// Radius in the components where the direction moves; `None` if one of them is a point.
-    fn within(&self, difference: &[f64], modes: usize, scale: f64) -> Option<f64> {
-        let mut radius = f64::INFINITY;
-        for (&own, part) in self.0.iter().zip(difference.chunks(modes)) {
-            if own > 1e-12 * scale {
-                radius = radius.min(own);
-            } else if dot(part, part).sqrt() > 1e-10 * scale {
-                return None;
-            }
+/// Removes noise in components where the polytope is a single point. Returns the radius of a ball
+/// about the centre inside the polytope in the other components, or `None` if the direction
+/// leaves such a point.
+fn hold_fixed(difference: &mut [f64], radii: &[f64], scale: f64) -> Option<f64> {
+    let modes = difference.len() / radii.len();
+    let mut smallest = f64::INFINITY;
+    for (&radius, part) in radii.iter().zip(difference.chunks_mut(modes)) {
+        if radius > FIXED * scale {
+            smallest = smallest.min(radius);
+        } else if dot(part, part).sqrt() <= NOISE * scale {
+            part.fill(0.0);
+        } else {
+            return None;
         }
-        Some(radius)
     }
+    Some(smallest)
 }
 
 /// A point of the polytope that is as far from uniform in every component as it can be: the mean
@@ -211,9 +217,9 @@ fn spread_point(oracle: &Oracle) -> Result<Vec<f64>> {
     Ok(mean)
 }
 
-/// The inner radius of the hull of all permutations of one point: the smallest distance of the
+/// For each component the inner radius of the hull of all permutations of one point: the smallest distance of the
 /// faces on which the m largest coordinates have their largest sum.
-fn inner_radius(oracle: &Oracle, centre: &[f64]) -> Result<InnerRadius> {
+fn inner_radii(oracle: &Oracle, centre: &[f64]) -> Result<Vec<f64>> {
     let modes = oracle.shape().1;
     let point = spread_point(oracle)?;
     let components = point.chunks(modes).zip(centre.chunks(modes));
@@ -227,5 +233,5 @@ fn inner_radius(oracle: &Oracle, centre: &[f64]) -> Result<InnerRadius> {
         }
         if modes == 1 { 0.0 } else { radius.max(0.0) }
     });
-    Ok(InnerRadius(radii.collect()))
+    Ok(radii.collect())
 }

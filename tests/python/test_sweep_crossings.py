@@ -20,8 +20,8 @@ def crossing_levels(x, coupling=0.0, phase=0.7):
     matrix[1, 0] = np.conj(matrix[0, 1])
     energies, vectors = np.linalg.eigh(matrix)
     return {
-        "energies": ("state", energies),
-        "vectors": (("configuration", "state"), vectors * np.exp(1j * x)),
+        "energies": ("level", energies),
+        "vectors": (("configuration", "level"), vectors * np.exp(1j * x)),
     }
 
 
@@ -42,7 +42,7 @@ def test_states_keep_their_character_through_a_crossing():
 def test_avoided_crossings_in_small_steps_keep_the_order():
     grid = {"coupling": [0.0, 0.2], "x": np.linspace(0, 1, 22)}
     followed = follow_states(sweep(crossing_levels, grid), "x")
-    crossed = followed.followed_crossing.any(["x", "state"])
+    crossed = followed.followed_crossing.any(["x", "level"])
     assert crossed.values.tolist() == [True, False]
     assert float(followed.followed_overlap.min()) > 0.9
 
@@ -71,7 +71,7 @@ def test_wrong_names():
     with pytest.raises(ArgumentError, match=r"`dim`.*'y'"):
         follow_states(results, "y")
     with pytest.raises(ArgumentError, match=r"`state`.*'level'"):
-        follow_states(results, "x", state="level")
+        follow_states(results, "x", state="place")
 
 
 def test_the_results_are_left_alone():
