@@ -9,12 +9,15 @@ from typing import TYPE_CHECKING, Any
 
 from fockhull import couplings, errors, lattices
 from fockhull._core import __version__
+from fockhull.configuration_ensemble import ConfigurationEnsemble
 from fockhull.ensemble import Ensemble, LevelCount, SolveProgress, solve
 from fockhull.errors import CutMultipletWarning, FockhullError
 from fockhull.hamiltonian import Hamiltonian, MemoryEstimate
+from fockhull.inequality import Inequality
 from fockhull.interaction import Interaction
-from fockhull.polytope import ConfigurationEnsemble, ExclusionPolytope, Projection, Stretch
-from fockhull.sectors import Bosons, Fermions, LowestConfigurations, SpinHalfFermions
+from fockhull.polytope import ExclusionPolytope
+from fockhull.projection import Projection, Stretch, Support
+from fockhull.sectors import Bosons, Fermions, LowestConfigurations, Sector, SpinHalfFermions
 
 __all__ = [
     "Bosons",
@@ -25,14 +28,17 @@ __all__ = [
     "Fermions",
     "FockhullError",
     "Hamiltonian",
+    "Inequality",
     "Interaction",
     "LevelCount",
     "LowestConfigurations",
     "MemoryEstimate",
     "Projection",
+    "Sector",
     "SolveProgress",
     "SpinHalfFermions",
     "Stretch",
+    "Support",
     "__version__",
     "couplings",
     "errors",

@@ -22,16 +22,16 @@ def ensemble_dataset(ensemble: Ensemble, *, vectors: bool) -> xr.Dataset:
     matrix = (*spin, "mode", "mode_2")
     variables: dict[str, Any] = {
         "energies": ("level", ensemble.energies),
-        "residuals": ("level", ensemble.residuals),
-        "error_bounds": ("level", ensemble.error_bounds),
         "excitation_energies": ("level", ensemble.excitation_energies),
         "state_density_matrices": (("level", *matrix), ensemble.state_density_matrices),
+        **_certificates(ensemble),
     }
     if spin:
         variables["spin_squared"] = ("level", ensemble.spin_squared)
     if ensemble.weights is not None:
         variables |= {
             "weights": ("level", ensemble.weights),
+            "multiplet_cut": ((), bool(ensemble.cut_multiplets)),
             "energy": ((), ensemble.energy),
             "energy_error_bound": ((), ensemble.energy_error_bound),
             "interaction_energy": ((), ensemble.interaction_energy),
@@ -46,28 +46,38 @@ def ensemble_dataset(ensemble: Ensemble, *, vectors: bool) -> xr.Dataset:
         "mode": np.arange(sector.modes),
         "mode_2": np.arange(sector.modes),
     }
+    if ensemble.weights is not None:
+        coordinates["natural_orbital"] = np.arange(1, sector.modes + 1)
     if spin:
         coordinates["spin"] = ["up", "down"]
     return xr.Dataset(variables, coordinates, _attributes(ensemble))
 
 
 def _attributes(ensemble: Ensemble) -> dict[str, Any]:
-    count = ensemble.level_count
-    levels = ensemble._levels
-    attributes: dict[str, Any] = {
+    """What is the same at every point of a sweep; the rest are variables."""
+    return {
         "sector": repr(ensemble.hamiltonian.sector),
         "convention": CONVENTION,
-        "level_count": count.kind,
-        "multiplets": str(list(ensemble.multiplets)),
-        "method": ensemble.method,
-        "tolerance": levels.tolerance,
-        "seed": levels.seed,
+        "tolerance": ensemble._levels.tolerance,
+        "seed": ensemble._levels.seed,
         "fockhull_version": _core.__version__,
     }
-    if count.failure_probability is not None:
-        attributes["level_count_failure_probability"] = count.failure_probability
-    if ensemble.next_energy is not None:
-        attributes["next_energy"] = ensemble.next_energy
-    if ensemble.weights is not None:
-        attributes["cut_multiplets"] = str(list(ensemble.cut_multiplets))
-    return attributes
+
+
+def _certificates(ensemble: Ensemble) -> dict[str, Any]:
+    """How the levels were found and counted, and their multiplets."""
+    count = ensemble.level_count
+    multiplet = np.zeros(len(ensemble.energies), dtype=np.int64)
+    for number, (start, stop) in enumerate(ensemble.multiplets, start=1):
+        multiplet[start:stop] = number
+    probability = count.failure_probability
+    return {
+        "residuals": ("level", ensemble.residuals),
+        "error_bounds": ("level", ensemble.error_bounds),
+        "multiplet": ("level", multiplet),
+        "level_count": ((), count.kind),
+        "level_count_failure_probability": ((), np.nan if probability is None else probability),
+        "next_energy": ((), np.nan if ensemble.next_energy is None else ensemble.next_energy),
+        "method": ((), ensemble.method),
+        "products": ((), ensemble.products),
+    }

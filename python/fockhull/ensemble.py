@@ -7,7 +7,7 @@ import warnings
 from collections.abc import Callable
 from dataclasses import dataclass
 from functools import cached_property
-from typing import TYPE_CHECKING, Any, NamedTuple
+from typing import TYPE_CHECKING, Any, Literal, NamedTuple
 
 import numpy as np
 import numpy.typing as npt
@@ -23,6 +23,7 @@ from fockhull.errors import (
     CutMultipletWarning,
 )
 from fockhull.hamiltonian import Hamiltonian
+from fockhull.polytope import ExclusionPolytope
 
 if TYPE_CHECKING:
     import xarray as xr
@@ -255,7 +256,13 @@ class Ensemble:
             For sectors without spin.
         """
         rows = np.ascontiguousarray(self._levels.rows[: self._count])
-        return _core.spin_squared(self._hamiltonian.sector._core, rows)
+        # rounding must not leave a negative square
+        return np.maximum(_core.spin_squared(self._hamiltonian.sector._core, rows), 0.0)
+
+    @property
+    def total_spin(self) -> RealArray:
+        """Total spin S of each state, from `spin_squared`, shape (r,); spin-1/2 only."""
+        return np.asarray(np.sqrt(self.spin_squared + 0.25) - 0.5)
 
     @property
     def cut_multiplets(self) -> tuple[tuple[int, int], ...]:
@@ -325,6 +332,18 @@ class Ensemble:
             )
         return _warned(Ensemble(self._hamiltonian, self._levels, len(values), values))
 
+    def exclusion_polytope(
+        self, domain: Literal["spin-resolved", "spin-summed"] | None = None
+    ) -> ExclusionPolytope:
+        """Return the exclusion polytope of the sector and the weights in force.
+
+        Parameters
+        ----------
+        domain : {"spin-resolved", "spin-summed"}
+            Needed for spin-1/2, and only there.
+        """
+        return ExclusionPolytope(self._hamiltonian.sector, self._required_weights(), domain)
+
     def to_xarray(self, *, vectors: bool = False) -> xr.Dataset:
         """Return the results as an `xarray.Dataset` with named dimensions and attributes.
 
@@ -336,7 +355,9 @@ class Ensemble:
         Returns
         -------
         xarray.Dataset
-            Save it with ``to_netcdf(path, engine="h5netcdf")``; complex numbers survive.
+            Attributes are what a sweep has in common, all else are variables. Save it with
+            ``to_netcdf(path, engine="h5netcdf")`` and open it with the same engine (h5netcdf 1.4
+            or newer): complex numbers survive.
         """
         from fockhull._labels import ensemble_dataset  # noqa: PLC0415
 
@@ -376,6 +397,7 @@ def solve(
     seed: int = 0,
     progress: bool | Callable[[SolveProgress], object] | None = None,
     max_products: int | None = None,
+    symmetrize: bool = False,
 ) -> Ensemble:
     r"""Find the r lowest states and the ensemble that the weights make of them.
 
@@ -407,6 +429,8 @@ def solve(
         True shows a bar (tqdm); a callable receives a `SolveProgress` once a step.
     max_products : int, optional
         Stop as not converged after so many products; by default 5000 + 500 r.
+    symmetrize : bool
+        Return the `Ensemble.symmetrized` one, without a warning.
 
     Returns
     -------
@@ -472,7 +496,7 @@ def solve(
             "exception's `result`; loosen tol, or start from the partial result",
             result,
         )
-    return _warned(result)
+    return result.symmetrized() if symmetrize else _warned(result)
 
 
 def _levels(found: _core.Levels, tolerance: float, seed: int) -> _Levels:

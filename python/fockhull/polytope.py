@@ -2,9 +2,8 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
-from functools import cached_property
-from typing import Any, Literal, NamedTuple, TypeAlias, TypeVar, cast
+from functools import partial
+from typing import Any, Literal, TypeAlias
 
 import numpy as np
 import numpy.typing as npt
@@ -12,298 +11,18 @@ import numpy.typing as npt
 from fockhull import _arguments as arguments
 from fockhull import _core
 from fockhull._html import table
-from fockhull.errors import (
-    ArgumentError,
-    ArgumentIndexError,
-    ArgumentTypeError,
-    ComputationError,
-    ConvergenceError,
-)
-from fockhull.sectors import Bosons, Sector, SpinHalfFermions
+from fockhull.errors import ArgumentError, ArgumentTypeError, ComputationError, ConvergenceError
+from fockhull.inequality import Inequality, TightestInequality
+from fockhull.projection import Projection, Stretch, Support
+from fockhull.sectors import Sector, SpinHalfFermions
 
-__all__ = [
-    "ConfigurationEnsemble",
-    "ExclusionPolytope",
-    "Projection",
-    "Stretch",
-    "Support",
-]
+__all__ = ["ExclusionPolytope"]
 
 RealArray: TypeAlias = npt.NDArray[np.float64]
 ScalarArray: TypeAlias = npt.NDArray[np.float64 | np.complex128]
 
-_Numbers = TypeVar("_Numbers", bound=npt.NDArray[Any])
-
-VERIFY_TOLERANCE = 1e-9
-
-
-class Support(NamedTuple):
-    """Value of the support function and where it is attained."""
-
-    value: Any
-    """f_w(h) = min of <h, n> over the polytope; a float, or an array over the batch."""
-    occupations: RealArray
-    """Occupations that attain it, in the shape of h."""
-
-
-@dataclass(frozen=True, eq=False)
-class Stretch:
-    """How far occupations can be scaled about the centre before they leave the polytope.
-
-    Compares and converts like its `value`; the occupations are allowed exactly when it is
-    at least 1.
-    """
-
-    value: Any
-    """The factor (an upper bound, proved by `normal`).
-
-    Infinite at the centre, zero elsewhere if the polytope is a single point. A float, or an array
-    over the batch.
-    """
-    lower: Any
-    """Certified lower bound of the factor."""
-    boundary: RealArray
-    """Occupations where the boundary is met, in the order of the natural orbitals."""
-    normal: RealArray
-    """Normal h of the face met there: all n of the polytope have <h, n> >= <h, boundary>."""
-    constraint: Any
-    """The inequality met there, in words; None where the list of inequalities is not known."""
-
-    def __float__(self) -> float:
-        return float(self.value)
-
-    def __lt__(self, other: Any) -> Any:
-        return self.value < other
-
-    def __le__(self, other: Any) -> Any:
-        return self.value <= other
-
-    def __gt__(self, other: Any) -> Any:
-        return self.value > other
-
-    def __ge__(self, other: Any) -> Any:
-        return self.value >= other
-
-    def __repr__(self) -> str:
-        if np.ndim(self.value):
-            return f"Stretch({np.size(self.value)} points, {np.min(self.value):.6g} at least)"
-        met = f", limited by {self.constraint}" if self.constraint else ""
-        return f"Stretch({self.value:.10g}{met})"
-
-
-class ConfigurationEnsemble:
-    """An explicit ensemble of configurations with given occupations.
-
-    A mixture of line-ups: the r configurations of lowest energy for a `potential`, in order,
-    the j-th with weight w_j; each line-up occurs with each of the `permutations` of modes.
-    Every member of the mixture is a density operator with spectrum w.
-    """
-
-    def __init__(
-        self,
-        sector: Sector,
-        weights: RealArray,
-        domain: str,
-        parts: tuple[RealArray, RealArray, RealArray, npt.NDArray[np.int64]],
-    ) -> None:
-        self._sector = sector
-        self._weights = weights
-        self._domain = domain
-        self._line_up_probabilities, self._potentials = parts[:2]
-        self._permutation_probabilities, self._permutations = parts[2:]
-
-    @property
-    def weights(self) -> RealArray:
-        """The weights, shape (r,)."""
-        return self._weights
-
-    @property
-    def probabilities(self) -> RealArray:
-        """Share of each term of the mixture, sum 1."""
-        return np.outer(self._line_up_probabilities, self._permutation_probabilities).reshape(-1)
-
-    def __len__(self) -> int:
-        return len(self._line_up_probabilities) * len(self._permutation_probabilities)
-
-    def configurations(self, term: int) -> npt.NDArray[np.int64]:
-        """Write out the configurations of a term in the order of the weights.
-
-        Returns
-        -------
-        numpy.ndarray
-            Integers, shape (r,) + ``sector.shape``; modes are those of the occupations given,
-            for a density matrix its natural orbitals.
-
-        Raises
-        ------
-        ArgumentIndexError
-            If there is no such term.
-        """
-        if not 0 <= term < len(self):
-            raise ArgumentIndexError("term", f"index {term}", f"0 to {len(self) - 1}")
-        line_up, permutation = divmod(term, len(self._permutations))
-        return self._permuted(self._line_up(line_up), self._permutations[permutation])
-
-    def _line_up(self, index: int) -> npt.NDArray[np.int64]:
-        potential = self._potentials[index]
-        energies = potential if self._domain == "spin-resolved" else potential[0]
-        return self._sector.lowest_configurations(energies, len(self._weights)).occupations
-
-    def _permuted(self, values: _Numbers, order: npt.NDArray[np.int64]) -> _Numbers:
-        if len(order) == 1:
-            return cast(_Numbers, values[..., order[0]])
-        rows = [values[..., s, order[s]] for s in range(len(order))]
-        return cast(_Numbers, np.stack(rows, axis=-2))
-
-    def occupations(self) -> RealArray:
-        """Occupations of the mixture, recomputed from its configurations."""
-        mixture = np.zeros(self._potentials.shape[1:])
-        for probability, index in zip(
-            self._line_up_probabilities, range(len(self._potentials)), strict=True
-        ):
-            mixture += probability * self._summed(self._weights @ self._flat(self._line_up(index)))
-        shape = mixture if self._domain == "spin-resolved" else mixture[0]
-        result = np.zeros_like(shape)
-        for probability, order in zip(
-            self._permutation_probabilities, self._permutations, strict=True
-        ):
-            result += probability * self._permuted(shape, order)
-        return result
-
-    def _flat(self, configurations: npt.NDArray[np.int64]) -> npt.NDArray[np.int64]:
-        return configurations.reshape(len(configurations), -1)
-
-    def _summed(self, occupations: RealArray) -> RealArray:
-        """Bring weighted occupations into the components of the domain."""
-        rows = occupations.reshape(-1, self._sector.modes)
-        return rows if self._domain == "spin-resolved" else rows.sum(axis=0, keepdims=True)
-
-    def verify(self, occupations: npt.ArrayLike, tol: float = VERIFY_TOLERANCE) -> bool:
-        """Check independently of the solver that the ensemble is one and has the occupations.
-
-        The probabilities must be a distribution, every line-up r different configurations of
-        the sector, every permutation one of modes, and the occupations those given.
-        """
-        target = arguments.reals("occupations", occupations)
-        shares = (self._line_up_probabilities, self._permutation_probabilities)
-        if any((p < -tol).any() or abs(p.sum() - 1.0) > tol for p in shares):
-            return False
-        modes = np.arange(self._sector.modes)
-        if not (np.sort(self._permutations, axis=-1) == modes).all():
-            return False
-        for index in range(len(self._potentials)):
-            line_up = self._line_up(index)
-            if not self._are_distinct_configurations(line_up):
-                return False
-        recomputed = self.occupations()
-        return recomputed.shape == target.shape and bool(
-            np.abs(recomputed - target).max(initial=0.0) <= tol
-        )
-
-    def _are_distinct_configurations(self, line_up: npt.NDArray[np.int64]) -> bool:
-        sector = self._sector
-        fermionic = not isinstance(sector, Bosons)
-        particles = line_up.sum(axis=-1)
-        return bool(
-            (line_up >= 0).all()
-            and (not fermionic or (line_up <= 1).all())
-            and (particles == np.asarray(sector.particles)).all()
-            and len(np.unique(self._flat(line_up), axis=0)) == len(self._weights)
-        )
-
-    def __repr__(self) -> str:
-        return (
-            f"ConfigurationEnsemble({len(self)} terms of {len(self._weights)} configurations, "
-            f"{self._sector!r}, {self._domain})"
-        )
-
-
-class Projection:
-    """The nearest allowed occupations (or density matrix), with their certificate.
-
-    Everything has the leading batch axes of what was projected.
-    """
-
-    def __init__(
-        self,
-        polytope: ExclusionPolytope,
-        core: _core.Projections,
-        lead: tuple[int, ...],
-        orbitals: ScalarArray | None,
-    ) -> None:
-        self._polytope = polytope
-        self._core = core
-        self._lead = lead
-        self._orbitals = orbitals
-
-    def _shaped(self, array: RealArray) -> RealArray:
-        return array.reshape(self._lead + self._polytope.shape)
-
-    def _numbers(self, array: RealArray) -> Any:
-        return array.reshape(self._lead) if self._lead else float(array[0])
-
-    @cached_property
-    def occupations(self) -> RealArray:
-        """The nearest occupations.
-
-        In the caller's order of modes, or decreasing (those of the natural orbitals) if a
-        density matrix was projected.
-        """
-        return self._shaped(self._core.occupations)
-
-    @cached_property
-    def normal(self) -> RealArray:
-        """Nearest occupations minus those given, h; outside it separates: f_w(h) > <h, n>."""
-        return self._shaped(self._core.normals)
-
-    @property
-    def distance(self) -> Any:
-        """Distance |x - y| (for density matrices in the Frobenius norm), an upper bound."""
-        return self._numbers(self._core.distance)
-
-    @property
-    def distance_lower(self) -> Any:
-        """Certified lower bound of the distance."""
-        return self._numbers(self._core.distance_lower)
-
-    @property
-    def gap(self) -> Any:
-        """Duality gap <h, x> - f_w(h); the exact projection is within sqrt(gap) of the result."""
-        return self._numbers(self._core.gap)
-
-    @cached_property
-    def density_matrix(self) -> ScalarArray:
-        """The nearest density matrix: same natural orbitals, nearest occupations.
-
-        Raises
-        ------
-        ArgumentError
-            If occupations were projected.
-        """
-        if self._orbitals is None:
-            raise ArgumentError("density_matrix", "occupations only", "a projected density matrix")
-        u = self._orbitals
-        scaled = u * self.occupations[..., np.newaxis, :]
-        return scaled @ u.conj().swapaxes(-1, -2)
-
-    @cached_property
-    def ensemble(self) -> Any:
-        """An explicit ensemble with the nearest occupations; for a batch a list of them (flat)."""
-        ensembles = [
-            ConfigurationEnsemble(
-                self._polytope.sector,
-                self._polytope.weights,
-                self._polytope.domain,
-                self._core.ensemble(index),
-            )
-            for index in range(int(np.prod(self._lead)))
-        ]
-        return ensembles if self._lead else ensembles[0]
-
-    def __repr__(self) -> str:
-        if self._lead:
-            return f"Projection(batch of shape {self._lead}, {self._polytope!r})"
-        return f"Projection(distance {self.distance:.6g}, gap {self.gap:.1e}, {self._polytope!r})"
+WORDING_LIMIT = 2_000
+"""Generating vertices up to which verdicts name the inequality they met without being asked."""
 
 
 class ExclusionPolytope:
@@ -325,7 +44,7 @@ class ExclusionPolytope:
     weights : array_like of float, shape (r,)
         w_1 >= ... >= w_r > 0 with sum 1.
     domain : {"spin-resolved", "spin-summed"}
-        Needed for spin-1/2, and only there: occupations of each spin, shape (2, d), in [0, 1];
+        Needed for spin-1/2, and only there (others are "spinless"): occupations of each spin, shape (2, d), in [0, 1];
         or of both together, shape (d,), in [0, 2].
 
     Raises
@@ -344,13 +63,13 @@ class ExclusionPolytope:
     array([0.9, 0.9, 0.8, 0.2, 0.1, 0.1])
     """
 
-    __slots__ = ("_core", "_domain", "_sector", "_weights")
+    __slots__ = ("_core", "_domain", "_inequalities", "_sector", "_weights")
 
     def __init__(
         self,
         sector: Sector,
         weights: npt.ArrayLike,
-        domain: Literal["spin-resolved", "spin-summed"] | None = None,
+        domain: Literal["spin-resolved", "spin-summed", "spinless"] | None = None,
     ) -> None:
         if not isinstance(sector, Sector):
             raise ArgumentTypeError("sector", type(sector).__name__, "a sector of fockhull")
@@ -362,6 +81,7 @@ class ExclusionPolytope:
         self._weights = _core.checked_weights(np.ascontiguousarray(values))
         self._weights.flags.writeable = False
         self._core = _core.ExclusionPolytope(sector._core, self._weights, self._domain)
+        self._inequalities: tuple[Inequality, ...] | None = None
 
     @property
     def sector(self) -> Sector:
@@ -494,24 +214,119 @@ class ExclusionPolytope:
             where the inequalities are known.
         """
         values, lead, _ = self._points(density_matrix, occupations)
-        factor, lower, boundary, normal, words = self._core.stretch(values)
+        factor, lower, boundary, normal = self._core.stretch(values)
         shape = lead + self.shape
-        if lead:
-            constraint: Any = np.array(words, dtype=object).reshape(lead)
-            return Stretch(
-                factor.reshape(lead),
-                lower.reshape(lead),
-                boundary.reshape(shape),
-                normal.reshape(shape),
-                constraint,
-            )
+        points = boundary.reshape(shape)
         return Stretch(
-            float(factor[0]),
-            float(lower[0]),
-            boundary.reshape(shape),
+            factor.reshape(lead) if lead else float(factor[0]),
+            lower.reshape(lead) if lead else float(lower[0]),
+            points,
             normal.reshape(shape),
-            words[0],
+            partial(self._constraints, points, np.isfinite(factor) & (factor > 0)),
         )
+
+    def inequalities(self, *, limit: int | None = None) -> tuple[Inequality, ...]:
+        """List the facets exactly, in integers, for any weights, particle number and modes.
+
+        Complete and without redundancy, given that occupations are decreasing (per spin) and
+        sum to the particle number; sorted by the level at which each appears.
+
+        Parameters
+        ----------
+        limit : int, optional
+            Most generating vertices to enumerate, by default 200,000.
+
+        Raises
+        ------
+        ArgumentError
+            If there are more, foreseen from the growth from level to level; `contains`,
+            `project` and `stretch` need no list.
+
+        Examples
+        --------
+        >>> import fockhull as fh
+        >>> for facet in fh.ExclusionPolytope(fh.Fermions(6, 3), [0.6, 0.4]).inequalities():
+        ...     print(facet)
+        n6 >= 0
+        n1 <= 1
+        n1 + n2 + n3 <= N - 1 + w1 = 2.6
+        """
+        if self._inequalities is None:
+            core = self._line_ups(limit).inequalities()
+            self._inequalities = tuple(Inequality._wrap(one, self.shape) for one in core)
+        return self._inequalities
+
+    def new_at(self, r: int, *, limit: int | None = None) -> tuple[Inequality, ...]:
+        """List the inequalities that appear first with r weights, the step of the hierarchy."""
+        level = arguments.count("r", r)
+        return tuple(x for x in self.inequalities(limit=limit) if x.first_level == level)
+
+    def generating_vertices(self, *, limit: int | None = None) -> RealArray:
+        """Occupations of the generating vertices, decreasing; permutations give all vertices.
+
+        Returns
+        -------
+        numpy.ndarray
+            Shape (m,) + ``shape``, in the order of `line_ups`; errors as for `inequalities`.
+        """
+        occupations, _ = self._line_ups(limit).generating_vertices()
+        return occupations.reshape((len(occupations), *self.shape))
+
+    def line_ups(self, *, limit: int | None = None) -> npt.NDArray[np.uint32]:
+        """Write out the configurations behind the generating vertices, in the order of the weights.
+
+        Returns
+        -------
+        numpy.ndarray
+            Shape (m, r) + ``shape``; in the spin-summed domain both spins are added up. Errors
+            as for `inequalities`.
+        """
+        _, line_ups = self._line_ups(limit).generating_vertices()
+        return line_ups.reshape((*line_ups.shape[:2], *self.shape))
+
+    def tightest(
+        self,
+        density_matrix: npt.ArrayLike | None = None,
+        *,
+        occupations: npt.ArrayLike | None = None,
+    ) -> TightestInequality:
+        """Find the inequality that limits a density matrix most, or is violated most.
+
+        Parameters and errors as for `contains` (one point) and `inequalities`.
+
+        Returns
+        -------
+        TightestInequality
+            The inequality and its slack.
+        """
+        values, lead, _ = self._points(density_matrix, occupations)
+        if lead:
+            raise ArgumentError("occupations", f"a batch of shape {lead}", "a single point")
+        point = values.reshape(self.shape)
+        nearest = self._nearest(self.inequalities(), point)
+        return TightestInequality(nearest, float(nearest.slack(point)))
+
+    def _line_ups(self, limit: int | None) -> _core.LineUps:
+        return self._core.line_ups(None if limit is None else arguments.count("limit", limit))
+
+    def _nearest(self, inequalities: tuple[Inequality, ...], point: RealArray) -> Inequality:
+        distances = np.array([inequality.distance(point) for inequality in inequalities])
+        # of those that tie, the first
+        return inequalities[int(np.flatnonzero(distances <= distances.min() + 1e-9)[0])]
+
+    def _constraints(self, points: RealArray, met: npt.NDArray[np.bool_]) -> Any:
+        """Name the inequality met at each boundary point, where the list is short enough."""
+        try:
+            inequalities = self.inequalities(limit=None if self._inequalities else WORDING_LIMIT)
+        except ArgumentError:
+            inequalities = ()
+        rows = points.reshape(-1, *self.shape)
+        words = [
+            str(self._nearest(inequalities, row)) if inequalities and is_met else None
+            for row, is_met in zip(rows, met, strict=True)
+        ]
+        lead = points.shape[: points.ndim - len(self.shape)]
+        return np.array(words, dtype=object).reshape(lead) if lead else words[0]
 
     def _points(
         self, density_matrix: npt.ArrayLike | None, occupations: npt.ArrayLike | None
@@ -561,13 +376,12 @@ class ExclusionPolytope:
         return table("Exclusion polytope", rows)
 
     def __reduce__(self) -> tuple[Any, ...]:
-        domain = None if self._domain == "spinless" else self._domain
-        return type(self), (self._sector, self._weights, domain)
+        return type(self), (self._sector, self._weights, self._domain)
 
 
 def _checked_domain(sector: Sector, domain: str | None) -> str:
     if not isinstance(sector, SpinHalfFermions):
-        if domain is not None:
+        if domain not in (None, "spinless"):
             expected = "no domain; only spin-1/2 sectors have a choice"
             raise ArgumentError("domain", repr(domain), expected)
         return "spinless"

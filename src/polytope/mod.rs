@@ -9,13 +9,15 @@
 //! of vertices or inequalities, so r = 100 000 is as good as r = 3. Occupations come as
 //! `(components, modes)`: one component, or spin up and spin down where these are resolved.
 //!
+//! Where lists are small enough they come exactly, in integers ([`LineUps`]).
+//!
 //! The polytope lies in the plane where each component sums to its particle number. The
 //! projection of occupations with another sum first removes the excess uniformly over the modes
 //! of the component, which adds |sum - N| / sqrt(d) to the distance in quadrature.
 
 mod active_set;
 mod ensemble;
-mod inequality;
+mod exact;
 mod least_squares;
 mod monotone;
 mod oracle;
@@ -28,12 +30,13 @@ mod stretch;
 mod tests;
 
 pub use ensemble::{Ensemble, Term};
-pub use inequality::Inequality;
+pub use exact::{DEFAULT_LIMIT, GeneratingVertex, Inequality, LineUps};
 pub use oracle::Domain;
 pub use projection::{Projection, ProjectionOptions};
 pub use stretch::Stretch;
 
 use crate::error::{Error, Result};
+use crate::progress::Monitor;
 use crate::sector::Sector;
 use crate::weights::Weights;
 use ndarray::{Array2, ArrayView2};
@@ -130,40 +133,15 @@ impl ExclusionPolytope {
     /// to its particle number.
     pub fn stretch(&self, occupations: ArrayView2<'_, f64>) -> Result<Stretch> {
         self.check_occupations(occupations)?;
-        stretch::stretch(&self.oracle, occupations, |boundary| {
-            let list = self.inequalities().ok()?;
-            let distances = list.into_iter().filter_map(|inequality| {
-                let slack = inequality.slack(boundary).ok()?;
-                Some((slack / inequality.normal_length().max(1e-300), inequality))
-            });
-            let nearest = distances.min_by(|a, b| a.0.total_cmp(&b.0));
-            nearest.map(|(_, inequality)| inequality)
-        })
+        stretch::stretch(&self.oracle, occupations)
     }
 
-    /// The inequalities that describe the polytope: for up to four weights (three in the
-    /// spin-resolved domain) and enough particles and empty modes (the stable range).
+    /// All line-ups, and from them the generating vertices and the facet inequalities.
     ///
     /// # Errors
-    /// [`Error::Argument`] where the list is not known; the message gives the range.
-    pub fn inequalities(&self) -> Result<Vec<Inequality>> {
-        inequality::inequalities(&self.oracle)
-    }
-
-    /// The inequality with the least slack, and this slack; negative if it is violated.
-    ///
-    /// # Errors
-    /// As for [`ExclusionPolytope::inequalities`] and [`ExclusionPolytope::project`].
-    pub fn tightest(&self, occupations: ArrayView2<'_, f64>) -> Result<(Inequality, f64)> {
-        self.check_occupations(occupations)?;
-        let mut tightest: Option<(Inequality, f64)> = None;
-        for inequality in self.inequalities()? {
-            let slack = inequality.slack(occupations)?;
-            if tightest.as_ref().is_none_or(|(_, least)| slack < *least) {
-                tightest = Some((inequality, slack));
-            }
-        }
-        tightest.ok_or_else(|| Error::argument("sector", "no inequality", "a sector with modes"))
+    /// [`Error::Argument`] for more than `limit` of them, [`Error::Interrupted`].
+    pub fn line_ups(&self, limit: usize, monitor: &mut Monitor<'_>) -> Result<LineUps> {
+        LineUps::enumerate(self.sector(), self.weights(), self.domain(), limit, monitor)
     }
 
     fn check(&self, argument: &'static str, values: ArrayView2<'_, f64>) -> Result<()> {

@@ -1,7 +1,6 @@
 //! How far occupations can be scaled about the centre of the polytope.
 
 use super::active_set::remove_mean;
-use super::inequality::Inequality;
 use super::least_squares::dot;
 use super::oracle::Oracle;
 use super::projection::ProjectionOptions;
@@ -23,8 +22,6 @@ pub struct Stretch {
     /// Normal h of the face met there: value = (f_w(h) - `<h, c>`) / `<h, n - c>`. Zero where
     /// no face is met.
     pub normal: Array2<f64>,
-    /// The inequality met, where the list of inequalities is known.
-    pub inequality: Option<Inequality>,
     /// Calls of the linear oracle.
     pub oracle_calls: usize,
 }
@@ -41,12 +38,8 @@ const NOISE: f64 = 1e-10;
 const SHARE: f64 = 0.99;
 const LARGEST_STEP_COUNT: usize = 200;
 
-/// Stretch of validated occupations; `words` names the inequality at a boundary point.
-pub(super) fn stretch(
-    oracle: &Oracle,
-    occupations: ArrayView2<'_, f64>,
-    words: impl Fn(ArrayView2<'_, f64>) -> Option<Inequality>,
-) -> Result<Stretch> {
+/// Stretch of validated occupations.
+pub(super) fn stretch(oracle: &Oracle, occupations: ArrayView2<'_, f64>) -> Result<Stretch> {
     let sorting = Sorting::new(occupations);
     let mut sorted = sorting.sorted(occupations);
     let shifts = remove_excess(oracle, &mut sorted);
@@ -72,7 +65,6 @@ pub(super) fn stretch(
             lower,
             boundary: sorting.to_caller(&point),
             normal: sorting.to_caller(normal),
-            inequality: None,
             oracle_calls: calls,
         }
     };
@@ -87,8 +79,7 @@ pub(super) fn stretch(
     let unit: Vec<f64> = difference.iter().map(|d| d / length).collect();
     let exit = leave(oracle, &centre, &unit, radius)?;
     let (value, lower) = (exit.reach / length, exit.reach_lower / length);
-    let mut found = result(value, lower, value, &exit.normal, exit.calls + own_calls);
-    found.inequality = words(found.boundary.view());
+    let found = result(value, lower, value, &exit.normal, exit.calls + own_calls);
     Ok(found)
 }
 

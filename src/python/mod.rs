@@ -24,7 +24,7 @@ mod _core {
     #[pymodule_export]
     use super::levels::{Levels, checked_weights, density_matrices, lowest_levels, spin_squared};
     #[pymodule_export]
-    use super::polytope::{ExclusionPolytope, Projections};
+    use super::polytope::{ExclusionPolytope, Inequality, LineUps, Projections};
     #[pymodule_export]
     use super::sector::Sector;
     use super::*;

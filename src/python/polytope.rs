@@ -7,8 +7,10 @@ use crate::polytope as core;
 use crate::polytope::{Domain, ProjectionOptions};
 use crate::progress::Progress;
 use crate::weights::Weights;
-use numpy::ndarray::{Array1, Array2, Array3, ArrayView2, ArrayView3, Axis};
-use numpy::{IntoPyArray, PyArray1, PyArray3, PyReadonlyArray1, PyReadonlyArray3};
+use numpy::ndarray::{Array1, Array2, Array3, Array4, ArrayView2, ArrayView3, Axis};
+use numpy::{
+    IntoPyArray, PyArray1, PyArray2, PyArray3, PyArray4, PyReadonlyArray1, PyReadonlyArray3,
+};
 use pyo3::prelude::*;
 use rayon::prelude::*;
 use std::ops::ControlFlow;
@@ -22,6 +24,27 @@ pub struct ExclusionPolytope {
     inner: core::ExclusionPolytope,
 }
 
+/// All line-ups of a polytope.
+#[pyclass(frozen, module = "fockhull._core")]
+pub struct LineUps {
+    inner: core::LineUps,
+}
+
+/// A facet: integer coefficients, bound as constant + weights, number, words.
+#[pyclass(frozen, get_all, module = "fockhull._core")]
+pub struct Inequality {
+    /// `(components, modes)`
+    coefficients: Py<PyArray2<i64>>,
+    bound_constant: i64,
+    bound_weights: Vec<i64>,
+    bound: f64,
+    first_level: usize,
+    is_positivity: bool,
+    normal_length: f64,
+    sentence: String,
+    latex: String,
+}
+
 /// Projections of a batch.
 #[pyclass(frozen, module = "fockhull._core")]
 pub struct Projections {
@@ -31,13 +54,12 @@ pub struct Projections {
 /// Numbers `(batch,)` and occupations `(batch, components, modes)`.
 type Batch<'py> = (Bound<'py, PyArray1<f64>>, Bound<'py, PyArray3<f64>>);
 
-/// Factors, lower bounds, boundary points, normals, words.
+/// Factors, lower bounds, boundary points, normals.
 type StretchParts<'py> = (
     Bound<'py, PyArray1<f64>>,
     Bound<'py, PyArray1<f64>>,
     Bound<'py, PyArray3<f64>>,
     Bound<'py, PyArray3<f64>>,
-    Vec<Option<String>>,
 );
 
 /// An explicit ensemble: mixture of line-ups, times mixture of permutations of modes.
@@ -58,6 +80,9 @@ fn stacked<'a>(
     }
     all
 }
+
+/// Occupations of the generating vertices and their line-ups.
+type Vertices<'py> = (Bound<'py, PyArray3<f64>>, Bound<'py, PyArray4<u32>>);
 
 /// Runs `work` for each member, in parallel, with looks at the signals in between.
 fn for_batch<T: Send>(
@@ -120,6 +145,14 @@ impl ExclusionPolytope {
         self.inner.shape()
     }
 
+    /// All line-ups, at most `limit`.
+    #[pyo3(signature = (limit=None))]
+    fn line_ups(&self, py: Python<'_>, limit: Option<usize>) -> PyResult<LineUps> {
+        let limit = limit.unwrap_or(core::DEFAULT_LIMIT);
+        let inner = enter_monitored(py, None, |monitor| self.inner.line_ups(limit, monitor))?;
+        Ok(LineUps { inner })
+    }
+
     /// Values `(batch,)` and minimisers of the support function.
     fn support<'py>(
         &self,
@@ -163,7 +196,7 @@ impl ExclusionPolytope {
         Ok(Projections { inner })
     }
 
-    /// Factors, their lower bounds, boundary points, normals and the inequality met in words.
+    /// Factors, their lower bounds, boundary points and normals.
     fn stretch<'py>(
         &self,
         py: Python<'py>,
@@ -177,17 +210,61 @@ impl ExclusionPolytope {
         let lower: Array1<f64> = found.iter().map(|s| s.lower).collect();
         let boundary = stacked(found.iter().map(|s| &s.boundary), self.inner.shape());
         let normals = stacked(found.iter().map(|s| &s.normal), self.inner.shape());
-        let words = found
-            .iter()
-            .map(|s| s.inequality.as_ref().map(ToString::to_string))
-            .collect();
         Ok((
             values.into_pyarray(py),
             lower.into_pyarray(py),
             boundary.into_pyarray(py),
             normals.into_pyarray(py),
-            words,
         ))
+    }
+}
+
+#[pymethods]
+impl LineUps {
+    /// Number of generating vertices.
+    #[getter]
+    fn count(&self) -> usize {
+        self.inner.count()
+    }
+
+    /// Occupations `(count, components, modes)` of the generating vertices, and the line-ups
+    /// `(count, r, components, modes)`.
+    fn generating_vertices<'py>(&self, py: Python<'py>) -> PyResult<Vertices<'py>> {
+        let (occupations, line_ups) = enter(py, || {
+            let vertices = self.inner.generating_vertices()?;
+            let first = vertices.first().map(|v| v.configurations.dim());
+            let (r, components, modes) = first.unwrap_or((0, 0, 0));
+            let count = vertices.len();
+            let mut occupations = Array3::zeros((count, components, modes));
+            let mut line_ups = Array4::zeros((count, r, components, modes));
+            for (k, vertex) in vertices.iter().enumerate() {
+                occupations
+                    .index_axis_mut(Axis(0), k)
+                    .assign(&vertex.occupations);
+                line_ups
+                    .index_axis_mut(Axis(0), k)
+                    .assign(&vertex.configurations);
+            }
+            Ok((occupations, line_ups))
+        })?;
+        Ok((occupations.into_pyarray(py), line_ups.into_pyarray(py)))
+    }
+
+    /// The facet inequalities, sorted by the level at which they appear.
+    fn inequalities(&self, py: Python<'_>) -> PyResult<Vec<Inequality>> {
+        let list = enter(py, || self.inner.inequalities())?;
+        let wrapped = list.into_iter().map(|inequality| Inequality {
+            sentence: inequality.sentence(),
+            latex: inequality.latex(),
+            normal_length: inequality.normal_length(),
+            bound_constant: inequality.bound_constant,
+            bound_weights: inequality.bound_weights,
+            bound: inequality.bound,
+            first_level: inequality.first_level,
+            is_positivity: inequality.positivity,
+            coefficients: inequality.coefficients.into_pyarray(py).unbind(),
+        });
+        Ok(wrapped.collect())
     }
 }
 

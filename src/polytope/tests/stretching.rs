@@ -44,13 +44,9 @@ fn spins_that_share_an_excitation_are_stretched_together() {
     let n = array![[0.5, 0.5], [0.6, 0.4]];
     let stretch = polytope.stretch(n.view()).unwrap();
     assert!((stretch.value - 5.0).abs() < 1e-12);
-    let words = stretch.inequality.unwrap().to_string();
-    assert_eq!(words, "n1(down) <= 1");
     let n = array![[0.7, 0.3], [0.6, 0.4]];
     let stretch = polytope.stretch(n.view()).unwrap();
     assert!((stretch.value - 0.5 / 0.3).abs() < 1e-12);
-    let words = stretch.inequality.unwrap().to_string();
-    assert_eq!(words, "n1(up) + n1(down) <= 1.5 (= N_up + N_down - 1 + w1)");
 }
 
 #[test]
