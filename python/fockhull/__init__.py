@@ -10,7 +10,8 @@ from typing import TYPE_CHECKING, Any
 from fockhull import couplings, errors, lattices
 from fockhull._core import __version__
 from fockhull.configuration_ensemble import ConfigurationEnsemble
-from fockhull.ensemble import Ensemble, LevelCount, SolveProgress, solve
+from fockhull.eigenproblem import SolveProgress, solve
+from fockhull.ensemble import Ensemble, LevelCount
 from fockhull.errors import CutMultipletWarning, FockhullError
 from fockhull.hamiltonian import Hamiltonian, MemoryEstimate
 from fockhull.inequality import Inequality

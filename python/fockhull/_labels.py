@@ -54,7 +54,7 @@ def ensemble_dataset(ensemble: Ensemble, *, vectors: bool) -> xr.Dataset:
 
 
 def _attributes(ensemble: Ensemble) -> dict[str, Any]:
-    """What is the same at every point of a sweep; the rest are variables."""
+    """Collect what is the same at every point of a sweep; the rest are variables."""
     return {
         "sector": repr(ensemble.hamiltonian.sector),
         "convention": CONVENTION,

@@ -44,8 +44,8 @@ class ExclusionPolytope:
     weights : array_like of float, shape (r,)
         w_1 >= ... >= w_r > 0 with sum 1.
     domain : {"spin-resolved", "spin-summed"}
-        Needed for spin-1/2, and only there (others are "spinless"): occupations of each spin, shape (2, d), in [0, 1];
-        or of both together, shape (d,), in [0, 2].
+        Needed for spin-1/2, and only there (others are "spinless"): occupations of each spin,
+        shape (2, d), in [0, 1]; or of both together, shape (d,), in [0, 2].
 
     Raises
     ------

@@ -45,7 +45,7 @@ def test_report_gives_verdicts_in_words(demo):
     report, _ = demo
     assert "E_w is unique there" in report  # a cut multiplet is not passed over
     assert "Tightest constraint at 1.2 bohr: n4(" in report
-    assert "n1(up) + n2(up) + n1(down) + n2(down) <= 3.5" in report
+    assert "n1(up) + n2(up) + n1(down) + n2(down) <= N_up + N_down - 1 + w1 = 3.5" in report
     assert report.count(": yes") == 2  # the repaired matrix is allowed, its ensemble verified
 
 
