@@ -29,7 +29,11 @@ class MemoryEstimate:
     """What a Hamiltonian takes, in bytes."""
 
     representation: str
-    """How products are done: "stored matrix", "matrix-free" or "product of spins"."""
+    """How products are done.
+
+    "stored matrix", "row by row", "low and high modes" or "product of spins"; only the first
+    keeps the matrix.
+    """
     operator: int
     """For the tables or the matrix that products use."""
     vector: int
@@ -43,9 +47,10 @@ class Hamiltonian:
 
     .. math:: H = c + \sum_{pq} h_{pq}\, a^+_p a_q + W
 
-    Nothing large is built before the first product. Spinless particles are then kept as a
-    sparse matrix where it is small and worked out row by row where it is not; spin-1/2 always
-    goes through the product of up and down configurations, without a stored matrix.
+    Nothing large is built before the first product. Spin-1/2 goes through the product of up and
+    down configurations, spinless particles with density couplings through that of low and high
+    modes; both without a stored matrix. What is left is kept as a sparse matrix where it is
+    small, and worked out row by row where it is not.
 
     Parameters
     ----------

@@ -3,6 +3,7 @@
 use super::interaction::Interaction;
 use super::modes::ModeOperator;
 use super::spin_half::SpinHalfOperator;
+use super::split::SplitOperator;
 use super::stored::{RowSink, SparseMatrix};
 use super::symmetry;
 use super::terms::ModeTerms;
@@ -19,6 +20,13 @@ use std::sync::{Arc, OnceLock};
 /// A matrix of spinless particles up to this size is stored: products are then several times
 /// faster than working it out anew each time.
 const STORED_BYTES: u128 = 1 << 30;
+/// Spinless particles from this dimension on go through low and high modes.
+const SPLIT_DIMENSION: usize = 2_000;
+
+const STORED: &str = "stored matrix";
+const ROW_BY_ROW: &str = "row by row";
+const SPLIT: &str = "low and high modes";
+const SPINS: &str = "product of spins";
 
 /// A Hermitian operator c + sum h_pq a+_p a_q + W on a sector.
 #[derive(Debug)]
@@ -34,13 +42,15 @@ pub struct Hamiltonian<T> {
 enum Representation<T> {
     Stored(SparseMatrix<T>),
     Modes(ModeOperator<T>),
+    Split(SplitOperator<T>),
     SpinHalf(Box<SpinHalfOperator<T>>),
 }
 
 /// What a Hamiltonian takes, in bytes.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
 pub struct MemoryEstimate {
-    /// How products are done: "stored matrix", "matrix-free" or "product of spins".
+    /// How products are done: "stored matrix", "row by row", "low and high modes" or "product of
+    /// spins"; only the first keeps the matrix.
     pub representation: &'static str,
     /// For the tables or the matrix.
     pub operator: u128,
@@ -114,13 +124,22 @@ impl<T: Scalar> Hamiltonian<T> {
         self.constant
     }
 
-    fn mode_operator(&self, space: ModeSpace) -> ModeOperator<T> {
-        let terms = ModeTerms::new(
+    /// Terms of spinless particles.
+    fn mode_terms(&self) -> ModeTerms<T> {
+        ModeTerms::new(
             self.one_body.index_axis(Axis(0), 0),
             self.interaction.as_deref(),
             self.sector.is_fermionic(),
-        );
-        ModeOperator::new(space, terms)
+        )
+    }
+
+    /// Whether products go through low and high modes: faster than a stored matrix once the
+    /// groups have many configurations, but only single hops cross between them.
+    fn splits(&self, space: &ModeSpace) -> bool {
+        let moves_pairs = |w: &Arc<Interaction<T>>| w.tensor().is_some() || w.has_entries();
+        space.modes() > 1
+            && space.dimension() >= SPLIT_DIMENSION
+            && !self.interaction.as_ref().is_some_and(moves_pairs)
     }
 
     fn representation(&self) -> Result<&Representation<T>> {
@@ -144,7 +163,13 @@ impl<T: Scalar> Hamiltonian<T> {
             return Ok(Representation::SpinHalf(Box::new(operator)));
         }
         let space = spaces.swap_remove(0);
-        let operator = self.mode_operator(space);
+        if self.splits(&space) {
+            return Ok(Representation::Split(SplitOperator::new(
+                &space,
+                &self.mode_terms(),
+            )?));
+        }
+        let operator = ModeOperator::new(space, self.mode_terms());
         let bytes = operator.estimated_elements()? * element_bytes::<T>();
         let indexable = u32::try_from(operator.dimension()).is_ok();
         if indexable && bytes <= STORED_BYTES.min(memory::available_bytes() / 4) {
@@ -172,6 +197,10 @@ impl<T: Scalar> Hamiltonian<T> {
         let mut matrix = match self.representation()? {
             Representation::Stored(matrix) => matrix.clone(),
             Representation::Modes(operator) => operator.to_sparse(),
+            Representation::Split(_) => {
+                let space = ModeSpace::of(&self.sector)?.swap_remove(0);
+                ModeOperator::new(space, self.mode_terms()).to_sparse()
+            }
             Representation::SpinHalf(operator) => {
                 SparseMatrix::build(dimension, |rows: Range<usize>, sink: &mut RowSink<T>| {
                     operator.fill_rows(rows, sink);
@@ -193,29 +222,35 @@ impl<T: Scalar> Hamiltonian<T> {
         let vector = dimension * size_of::<T>() as u128;
         let spaces = ModeSpace::of(&self.sector)?;
         let [up, down] = spaces.as_slice() else {
-            let elements = self.mode_operator(spaces[0].clone()).estimated_elements()?;
-            let matrix = elements * element_bytes::<T>();
-            let stored = matrix <= STORED_BYTES;
-            return Ok(MemoryEstimate {
-                representation: if stored {
-                    "stored matrix"
-                } else {
-                    "matrix-free"
-                },
-                operator: if stored { matrix } else { 0 },
-                vector,
-                matrix,
-            });
+            return self.spinless_estimate(&spaces[0], vector);
         };
         let one_spin = self.one_spin_elements([up, down])?;
         let [per_up, per_down] =
             [(0, up), (1, down)].map(|(i, s)| one_spin[i].div_ceil(s.dimension() as u128));
         let (coupling, tables) = self.coupling_estimate([up, down]);
         Ok(MemoryEstimate {
-            representation: "product of spins",
+            representation: SPINS,
             operator: (one_spin[0] + one_spin[1]) * element_bytes::<T>() + tables,
             vector,
             matrix: dimension * (per_up + per_down + coupling) * element_bytes::<T>(),
+        })
+    }
+
+    fn spinless_estimate(&self, space: &ModeSpace, vector: u128) -> Result<MemoryEstimate> {
+        let operator = ModeOperator::new(space.clone(), self.mode_terms());
+        let matrix = operator.estimated_elements()? * element_bytes::<T>();
+        let (representation, operator) = if self.splits(space) {
+            (SPLIT, 0)
+        } else if matrix <= STORED_BYTES {
+            (STORED, matrix)
+        } else {
+            (ROW_BY_ROW, 0)
+        };
+        Ok(MemoryEstimate {
+            representation,
+            operator,
+            vector,
+            matrix,
         })
     }
 
@@ -270,9 +305,10 @@ impl<T: Scalar> Hamiltonian<T> {
     /// As [`Hamiltonian::prepare`].
     pub fn representation_name(&self) -> Result<&'static str> {
         Ok(match self.representation()? {
-            Representation::Stored(_) => "stored matrix",
-            Representation::Modes(_) => "matrix-free",
-            Representation::SpinHalf(_) => "product of spins",
+            Representation::Stored(_) => STORED,
+            Representation::Modes(_) => ROW_BY_ROW,
+            Representation::Split(_) => SPLIT,
+            Representation::SpinHalf(_) => SPINS,
         })
     }
 
@@ -284,6 +320,7 @@ impl<T: Scalar> Hamiltonian<T> {
         let mut diagonal = match self.representation()? {
             Representation::Stored(matrix) => matrix.diagonal(),
             Representation::Modes(operator) => operator.diagonal(),
+            Representation::Split(operator) => operator.diagonal(),
             Representation::SpinHalf(operator) => operator.diagonal(),
         };
         diagonal += self.constant;
@@ -319,6 +356,7 @@ impl<T: Scalar> LinearOperator<T> for Hamiltonian<T> {
         match self.representation()? {
             Representation::Stored(matrix) => matrix.apply(block, out.view_mut()),
             Representation::Modes(operator) => operator.apply(block, out.view_mut()),
+            Representation::Split(operator) => operator.apply(block, out.view_mut()),
             Representation::SpinHalf(operator) => operator.apply(block, out.view_mut()),
         }
         if self.constant != 0.0 {

@@ -1,6 +1,6 @@
 //! Interactions and Hamiltonians.
 //!
-//! [`Interaction`] holds what the caller gave, validated; [`ModeTerms`] brings it to normal
+//! [`Interaction`] holds what the caller gave, validated; `ModeTerms` brings it to normal
 //! order for one kind of particles; products are done by a stored matrix or row by row for
 //! spinless particles, and through the product structure for spin-1/2.
 
@@ -9,7 +9,9 @@ mod hamiltonian;
 mod hops;
 mod interaction;
 mod modes;
+mod spaces;
 mod spin_half;
+mod split;
 mod stored;
 mod symmetry;
 mod terms;

@@ -10,13 +10,13 @@ use super::interaction::Interaction;
 use super::modes::ModeOperator;
 use super::stored::{RowSink, SparseMatrix};
 use super::terms::ModeTerms;
-use super::tile::{multiply_tile, transpose_in, transpose_out, with_tile_width};
+use super::tile::{Lane, multiply_tile, transpose_in, transpose_out, with_tile_width};
 use super::walker::ModeSpace;
 use crate::dense::{Conjugate, Threads, multiply};
 use crate::error::Result;
 use crate::memory;
 use crate::scalar::Scalar;
-use ndarray::{Array1, Array2, ArrayView2, ArrayView3, ArrayViewMut2, ArrayViewMut3, Axis};
+use ndarray::{Array1, Array2, ArrayView2, ArrayView3, ArrayViewMut2, Axis};
 use rayon::prelude::*;
 use std::ops::Range;
 
@@ -193,18 +193,30 @@ impl<T: Scalar> SpinHalfOperator<T> {
     }
 
     /// Overwrites row k of `out` with the product with row k of `block`.
+    ///
+    /// One vector after the other: what the first pass reads is then still in cache for the
+    /// second.
     pub fn apply(&self, block: ArrayView2<'_, T>, mut out: ArrayViewMut2<'_, T>) {
         let (up, down) = self.shape();
-        with_tile_width!(up, W => self.apply_down::<W>(block, out.view_mut()));
-        let shape = (block.nrows(), up, down);
-        if let (Ok(block), Ok(mut out)) = (
-            block.into_shape_with_order(shape),
-            out.view_mut().into_shape_with_order(shape),
-        ) {
-            self.add_dense_down(block, out.view_mut());
-            match &self.up.dense {
-                Some(dense) => add_dense_up(dense, block, out),
-                None => with_tile_width!(down, W => self.add_up::<W>(block, out)),
+        for (vector, mut result) in block.rows().into_iter().zip(out.rows_mut()) {
+            let (Some(vector), Some(result)) = (vector.to_slice(), result.as_slice_mut()) else {
+                continue;
+            };
+            with_tile_width!(up, W => self.apply_down::<W>(vector, result));
+            if let (Ok(vector), Ok(result)) = (
+                ArrayView2::from_shape((up, down), vector),
+                ArrayViewMut2::from_shape((up, down), result),
+            ) {
+                self.add_dense_down(vector, result);
+            }
+            if let (Ok(vector), Ok(result)) = (
+                ArrayView2::from_shape((up, down), vector),
+                ArrayViewMut2::from_shape((up, down), result),
+            ) {
+                match &self.up.dense {
+                    Some(dense) => add_product((dense.view(), vector), result),
+                    None => with_tile_width!(down, W => self.add_up::<W>(vector, result)),
+                }
             }
         }
         if let Some(hops) = &self.hops {
@@ -213,86 +225,68 @@ impl<T: Scalar> SpinHalfOperator<T> {
     }
 
     /// The sparse down part and the density coupling, a tile of rows at a time, transposed.
-    fn apply_down<const W: usize>(&self, block: ArrayView2<'_, T>, mut out: ArrayViewMut2<'_, T>) {
+    fn apply_down<const W: usize>(&self, vector: &[T], result: &mut [T]) {
         let width = self.down.sparse.rows();
         let matrix = self.down.dense.is_none().then_some(&self.down.sparse);
         let arch = pulp::Arch::new();
-        out.axis_chunks_iter_mut(Axis(1), W * width)
-            .into_par_iter()
+        result
+            .par_chunks_mut(W * width)
+            .zip(vector.par_chunks(W * width))
             .enumerate()
             .for_each_init(
                 || (vec![[T::zero(); W]; width], vec![[T::zero(); W]; width]),
-                |(source, target), (tile, mut part)| {
-                    let first = tile * W;
-                    let rows = part.ncols() / width;
+                |(source, target), (tile, (result, vector))| {
+                    let mut rows: Vec<&mut [T]> = result.chunks_mut(width).collect();
+                    let lanes = vector.chunks(width).enumerate();
+                    let lanes: Vec<Lane<'_, T>> = lanes.map(|(k, row)| (k, 1.0, row)).collect();
                     let coupling = self.density.as_ref();
-                    let potentials = coupling.map(|c| (c, c.potentials::<W>(first, rows)));
-                    for (vector, mut result) in block.rows().into_iter().zip(part.rows_mut()) {
-                        let columns = first * width..(first + rows) * width;
-                        let input = vector.slice_move(ndarray::s![columns]);
-                        if let (Some(input), Some(result)) =
-                            (input.as_slice(), result.as_slice_mut())
-                        {
-                            arch.dispatch(|| {
-                                transpose_in(input, source);
-                                multiply_tile(matrix, source, target, |i, x| match &potentials {
-                                    Some((coupling, potentials)) => coupling.act(potentials, i, x),
-                                    None => [T::zero(); W],
-                                });
-                                transpose_out(target, result);
-                            });
-                        }
-                    }
+                    let potentials = coupling.map(|c| (c, c.potentials::<W>(tile * W, rows.len())));
+                    arch.dispatch(|| {
+                        transpose_in(&lanes, source);
+                        multiply_tile(matrix, source, target, |i, x| match &potentials {
+                            Some((coupling, potentials)) => coupling.act(potentials, i, x),
+                            None => [T::zero(); W],
+                        });
+                        transpose_out(target, &mut rows);
+                    });
                 },
             );
     }
 
+    fn add_dense_down(&self, vector: ArrayView2<'_, T>, result: ArrayViewMut2<'_, T>) {
+        if let Some(dense) = &self.down.dense {
+            add_product((vector, dense.t()), result);
+        }
+    }
+
     /// The sparse up part, a tile of columns at a time.
-    fn add_up<const W: usize>(&self, block: ArrayView3<'_, T>, mut out: ArrayViewMut3<'_, T>) {
+    fn add_up<const W: usize>(&self, vector: ArrayView2<'_, T>, mut result: ArrayViewMut2<'_, T>) {
         let height = self.up.sparse.rows();
         let arch = pulp::Arch::new();
-        out.axis_chunks_iter_mut(Axis(2), W)
+        result
+            .axis_chunks_iter_mut(Axis(1), W)
             .into_par_iter()
             .enumerate()
             .for_each_init(
                 || (vec![[T::zero(); W]; height], vec![[T::zero(); W]; height]),
-                |(source, target), (tile, mut part)| {
-                    let columns = tile * W..tile * W + part.len_of(Axis(2));
-                    for (vector, mut result) in block.outer_iter().zip(part.outer_iter_mut()) {
-                        let columns = columns.clone();
-                        arch.dispatch(|| {
-                            for (row, packed) in vector.rows().into_iter().zip(&mut *source) {
-                                if let Some(row) = row.to_slice() {
-                                    packed[..columns.len()].copy_from_slice(&row[columns.clone()]);
-                                }
+                |(source, target), (tile, mut result)| {
+                    let columns = tile * W..tile * W + result.ncols();
+                    arch.dispatch(|| {
+                        for (row, packed) in vector.rows().into_iter().zip(&mut *source) {
+                            if let Some(row) = row.to_slice() {
+                                packed[..columns.len()].copy_from_slice(&row[columns.clone()]);
                             }
-                            let none = |_: usize, _: &[T; W]| [T::zero(); W];
-                            multiply_tile(Some(&self.up.sparse), source, target, none);
-                            for (mut row, sums) in result.rows_mut().into_iter().zip(&*target) {
-                                for (total, &sum) in row.iter_mut().zip(sums) {
-                                    *total += sum;
-                                }
+                        }
+                        let none = |_: usize, _: &[T; W]| [T::zero(); W];
+                        multiply_tile(Some(&self.up.sparse), source, target, none);
+                        for (mut row, sums) in result.rows_mut().into_iter().zip(&*target) {
+                            for (total, &sum) in row.iter_mut().zip(sums) {
+                                *total += sum;
                             }
-                        });
-                    }
+                        }
+                    });
                 },
             );
-    }
-
-    fn add_dense_down(&self, block: ArrayView3<'_, T>, mut out: ArrayViewMut3<'_, T>) {
-        let Some(dense) = &self.down.dense else {
-            return;
-        };
-        for (vector, result) in block.outer_iter().zip(out.outer_iter_mut()) {
-            multiply(
-                T::one(),
-                (vector, Conjugate::No),
-                (dense.t(), Conjugate::No),
-                T::one(),
-                result,
-                Threads::All,
-            );
-        }
     }
 
     /// Pushes the rows of a range.
@@ -343,19 +337,17 @@ impl<T: Scalar> SpinHalfOperator<T> {
     }
 }
 
-fn add_dense_up<T: Scalar>(
-    dense: &Array2<T>,
-    block: ArrayView3<'_, T>,
-    mut out: ArrayViewMut3<'_, T>,
+/// result += left right
+fn add_product<T: Scalar>(
+    (left, right): (ArrayView2<'_, T>, ArrayView2<'_, T>),
+    result: ArrayViewMut2<'_, T>,
 ) {
-    for (vector, result) in block.outer_iter().zip(out.outer_iter_mut()) {
-        multiply(
-            T::one(),
-            (dense.view(), Conjugate::No),
-            (vector, Conjugate::No),
-            T::one(),
-            result,
-            Threads::All,
-        );
-    }
+    multiply(
+        T::one(),
+        (left, Conjugate::No),
+        (right, Conjugate::No),
+        T::one(),
+        result,
+        Threads::All,
+    );
 }

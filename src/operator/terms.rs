@@ -4,7 +4,8 @@
 use super::interaction::Interaction;
 use super::walker::Walker;
 use crate::scalar::Scalar;
-use ndarray::{Array2, ArrayView2};
+use ndarray::{Array2, ArrayView2, s};
+use std::ops::Range;
 
 /// H of one spin component (or of bosons) as a diagonal, hops and pair hops.
 #[derive(Debug, Clone)]
@@ -52,6 +53,38 @@ impl<T: Scalar> ModeTerms<T> {
         }
         terms.has_pair_hops = terms.pair_hops.iter().any(|list| !list.is_empty());
         terms
+    }
+
+    /// Coefficients of n_p n_q for p < q, and of n_p (n_p - 1) / 2 on the diagonal.
+    pub fn density(&self) -> &Array2<f64> {
+        &self.density
+    }
+
+    /// Coefficient of a+_p a_q for p != q.
+    pub fn hop_amplitude(&self, p: usize, q: usize) -> T {
+        let listed = self.hops[q].iter().find(|(created, _)| *created == p);
+        listed.map_or(T::zero(), |&(_, value)| value)
+    }
+
+    /// One-body terms and density couplings within a range of modes, counted from its start.
+    pub fn within(&self, modes: Range<usize>) -> Self {
+        let count = modes.len();
+        let inside = |list: &Vec<(usize, T)>| {
+            list.iter()
+                .filter(|(p, _)| modes.contains(p))
+                .map(|&(p, value)| (p - modes.start, value))
+                .collect()
+        };
+        ModeTerms {
+            level: self.level[modes.clone()].to_vec(),
+            density: self
+                .density
+                .slice(s![modes.clone(), modes.clone()])
+                .to_owned(),
+            hops: self.hops[modes.clone()].iter().map(inside).collect(),
+            pair_hops: vec![Vec::new(); count * count],
+            has_pair_hops: false,
+        }
     }
 
     fn collect_all_pairs(&mut self, interaction: &Interaction<T>, fermionic: bool) {

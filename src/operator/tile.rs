@@ -56,32 +56,51 @@ pub fn multiply_tile<T: Scalar, const W: usize>(
     }
 }
 
-/// Columns of a block of neighbouring rows that are transposed together: a cache line of each.
-const LINE: usize = 8;
-
-/// columns\[c\]\[r\] = rows\[r\]\[c\]; `rows` is row-major with as many columns as `columns`.
+/// target += matrix source
 #[inline(always)]
-pub fn transpose_in<T: Scalar, const W: usize>(rows: &[T], columns: &mut [[T; W]]) {
-    let width = columns.len();
-    for (block, part) in columns.chunks_mut(LINE).enumerate() {
-        for (offset, row) in rows.chunks_exact(width).enumerate() {
-            let row = &row[block * LINE..block * LINE + part.len()];
-            for (column, &x) in part.iter_mut().zip(row) {
-                column[offset] = x;
+pub fn add_tile_product<T: Scalar, const W: usize>(
+    matrix: &SparseMatrix<T>,
+    source: &[[T; W]],
+    target: &mut [[T; W]],
+) {
+    for (i, target) in target.iter_mut().enumerate() {
+        let (columns, values) = matrix.row(i);
+        for (&j, &value) in columns.iter().zip(values) {
+            let x = &source[j as usize];
+            for k in 0..W {
+                target[k] += value * x[k];
             }
         }
     }
 }
 
-/// rows\[r\]\[c\] = columns\[c\]\[r\]
+/// Columns that are transposed together: a cache line of each row.
+const LINE: usize = 8;
+
+/// A vector of a tile: its place, a factor, and its components.
+pub type Lane<'a, T> = (usize, f64, &'a [T]);
+
+/// tile\[c\]\[place\] = factor x vector\[c\] for each lane; other places stay as they are.
 #[inline(always)]
-pub fn transpose_out<T: Scalar, const W: usize>(columns: &[[T; W]], rows: &mut [T]) {
-    let width = columns.len();
-    for (block, part) in columns.chunks(LINE).enumerate() {
-        for (offset, row) in rows.chunks_exact_mut(width).enumerate() {
-            let row = &mut row[block * LINE..block * LINE + part.len()];
-            for (x, column) in row.iter_mut().zip(part) {
-                *x = column[offset];
+pub fn transpose_in<T: Scalar, const W: usize>(lanes: &[Lane<'_, T>], tile: &mut [[T; W]]) {
+    for (block, part) in tile.chunks_mut(LINE).enumerate() {
+        for &(place, factor, vector) in lanes {
+            let vector = &vector[block * LINE..block * LINE + part.len()];
+            for (components, &x) in part.iter_mut().zip(vector) {
+                components[place] = x * factor;
+            }
+        }
+    }
+}
+
+/// vectors\[place\]\[c\] = tile\[c\]\[place\]
+#[inline(always)]
+pub fn transpose_out<T: Scalar, const W: usize>(tile: &[[T; W]], vectors: &mut [&mut [T]]) {
+    for (block, part) in tile.chunks(LINE).enumerate() {
+        for (place, vector) in vectors.iter_mut().enumerate() {
+            let vector = &mut vector[block * LINE..block * LINE + part.len()];
+            for (x, components) in vector.iter_mut().zip(part) {
+                *x = components[place];
             }
         }
     }
@@ -95,12 +114,18 @@ mod tests {
     fn transposing_back_and_forth() {
         for (height, width) in [(1, 3), (5, 8), (8, 17), (7, 1)] {
             let rows: Vec<f64> = (0..height * width).map(|x| x as f64).collect();
-            let mut columns = vec![[0.0; NARROW]; width];
-            transpose_in(&rows, &mut columns);
-            assert_eq!(columns[width - 1][height - 1], rows[height * width - 1]);
+            let lanes: Vec<Lane<'_, f64>> = rows
+                .chunks(width)
+                .enumerate()
+                .map(|(place, row)| (place, 2.0, row))
+                .collect();
+            let mut tile = vec![[0.0; NARROW]; width];
+            transpose_in(&lanes, &mut tile);
+            assert_eq!(tile[width - 1][height - 1], 2.0 * rows[height * width - 1]);
             let mut back = vec![0.0; rows.len()];
-            transpose_out(&columns, &mut back);
-            assert_eq!(back, rows);
+            let mut vectors: Vec<&mut [f64]> = back.chunks_mut(width).collect();
+            transpose_out(&tile, &mut vectors);
+            assert!(back.iter().zip(&rows).all(|(a, b)| *a == 2.0 * b));
         }
     }
 }

@@ -32,6 +32,30 @@ impl ModeSpace {
             .collect())
     }
 
+    /// The configurations of `particles` in `modes`.
+    ///
+    /// # Errors
+    /// [`Error::TooManyConfigurations`] beyond 64-bit indices.
+    pub fn new(modes: usize, particles: usize, fermionic: bool) -> Result<Self> {
+        let slots = if fermionic || particles == 0 {
+            modes
+        } else {
+            modes + particles - 1
+        };
+        Ok(ModeSpace {
+            ranking: SubsetRanking::new(slots, particles)?,
+            modes,
+            fermionic,
+        })
+    }
+
+    /// Index of the configuration with the given particles, in the order of their modes.
+    pub fn index(&self, particles: &[u32]) -> usize {
+        let terms = particles.iter().enumerate();
+        let rank = |(i, &mode): (usize, &u32)| self.ranking.term(i, self.slot(mode as usize, i));
+        terms.map(rank).sum::<u64>() as usize
+    }
+
     /// Number of configurations.
     pub fn dimension(&self) -> usize {
         self.ranking.count() as usize

@@ -14,6 +14,7 @@ use numpy::ndarray::{Array1, ArrayView2, ArrayViewMut2, Axis, Ix2, Ix3};
 use numpy::{Element, IntoPyArray, PyArray1, PyReadwriteArray2};
 use pyo3::prelude::*;
 use pyo3::types::PyDict;
+use rayon::prelude::*;
 use std::ops::ControlFlow;
 use std::sync::Arc;
 
@@ -70,6 +71,22 @@ fn apply_rows<T: Scalar>(
     Ok(())
 }
 
+/// Refuses NaN and infinity, in parallel: it must cost little beside the product.
+fn check_finite<T: Scalar>(block: ArrayView2<'_, T>) -> Result<()> {
+    const PART: usize = 1 << 15;
+    let finite = block.rows().into_iter().all(|row| {
+        let parts: Vec<_> = row.axis_chunks_iter(Axis(0), PART).collect();
+        parts
+            .into_par_iter()
+            .all(|part| part.iter().fold(true, |all, x| all & x.is_finite()))
+    });
+    if finite {
+        Ok(())
+    } else {
+        Err(Error::argument("x", "NaN or infinity", "finite numbers"))
+    }
+}
+
 fn apply_checked<T: Scalar + Element>(
     py: Python<'_>,
     operator: &core::Hamiltonian<T>,
@@ -79,6 +96,7 @@ fn apply_checked<T: Scalar + Element>(
     let mut out: PyReadwriteArray2<'_, T> = out.extract()?;
     let out = out.as_array_mut();
     enter_monitored(py, None, move |monitor| {
+        check_finite(block)?;
         operator.prepare()?;
         apply_rows(operator, block, out, monitor)
     })

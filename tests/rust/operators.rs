@@ -251,3 +251,60 @@ fn many_strings_of_tiles_and_strips() {
     let hamiltonian = Hamiltonian::new(sector, h.view(), Some(Arc::new(interaction)), 0.0).unwrap();
     assert_matches(&hamiltonian, &naive_matrix(&sector, h.view(), &tensor), 3);
 }
+
+/// One-body terms and density couplings in spaces large enough for low and high modes.
+fn check_low_and_high<T: Scalar>() {
+    for (seed, sector) in [
+        Sector::fermions(14, 6).unwrap(),
+        Sector::fermions(14, 9).unwrap(),
+        Sector::bosons(7, 8).unwrap(),
+        Sector::fermions(64, 2).unwrap(),
+    ]
+    .into_iter()
+    .enumerate()
+    {
+        let mut generator = ChaCha8Rng::seed_from_u64(200 + seed as u64);
+        let d = sector.modes();
+        let mut h = random_one_body::<T>(&sector, &mut generator);
+        // some vanish, so that some crossings do
+        h.indexed_iter_mut()
+            .filter(|((_, p, q), _)| (p + q) % 3 == 0 || p.abs_diff(*q) > 40)
+            .for_each(|(_, x)| *x = T::zero());
+        let a = Array2::from_shape_fn((d, d), |_| f64::random_normal(&mut generator));
+        let density = Array2::from_shape_fn((d, d), |(p, q)| {
+            if p == q && sector.is_fermionic() {
+                0.0
+            } else {
+                a[[p, q]] + a[[q, p]]
+            }
+        });
+        let interaction = Interaction::<T>::from_density_density(sector, density.view()).unwrap();
+        let hamiltonian =
+            Hamiltonian::new(sector, h.view(), Some(Arc::new(interaction)), 0.5).unwrap();
+        assert_eq!(
+            hamiltonian.representation_name().unwrap(),
+            "low and high modes"
+        );
+        // the stored matrix is built another way and is checked above
+        let sparse = hamiltonian.to_sparse().unwrap();
+        let n = sparse.rows();
+        let block = Array2::from_shape_fn((2, n), |_| T::random_normal(&mut generator));
+        let (mut out, mut expected) = (Array2::zeros((2, n)), Array2::zeros((2, n)));
+        hamiltonian.apply(block.view(), out.view_mut()).unwrap();
+        sparse.apply(block.view(), expected.view_mut());
+        let worst = out
+            .iter()
+            .zip(&expected)
+            .map(|(x, y)| (*x - *y).abs())
+            .fold(0.0, f64::max);
+        assert_abs_diff_eq!(worst, 0.0, epsilon = 1e-10);
+        let diagonal = hamiltonian.diagonal_elements().unwrap();
+        assert_abs_diff_eq!(diagonal, sparse.diagonal(), epsilon = 1e-11);
+    }
+}
+
+#[test]
+fn low_and_high_modes() {
+    check_low_and_high::<f64>();
+    check_low_and_high::<Complex64>();
+}

@@ -66,8 +66,8 @@ impl LineUps {
     /// Searches all line-ups. The monitor is called from this thread between small batches.
     ///
     /// # Errors
-    /// [`Error::Argument`] for more than `limit` line-ups: foreseen from the growth from level to
-    /// level or counted; [`Error::Interrupted`].
+    /// [`crate::error::Error::Argument`] for more than `limit` line-ups: foreseen from the growth from level to
+    /// level or counted; [`crate::error::Error::Interrupted`].
     pub(super) fn enumerate(
         sector: &Sector,
         weights: &Weights,
@@ -101,7 +101,7 @@ impl LineUps {
     /// The generating vertices, in the order of the search.
     ///
     /// # Errors
-    /// [`Error::Memory`] if they do not fit.
+    /// [`crate::error::Error::Memory`] if they do not fit.
     pub fn generating_vertices(&self) -> Result<Vec<GeneratingVertex>> {
         let shape = (self.table.components, self.table.modes);
         let numbers = self.count() * shape.0 * shape.1;
