@@ -19,12 +19,14 @@ RealArray = npt.NDArray[np.float64]
 ScalarArray = npt.NDArray[np.float64 | np.complex128]
 IndexArray = npt.NDArray[np.intp]
 
+LARGEST_INTEGER = np.iinfo(np.int64).max
+
 SYMMETRY_TOLERANCE = 1e-8
 """Largest deviation from Hermiticity, relative to the largest element, that is averaged away."""
 
 
 def count(argument: str, value: object, minimum: int = 1) -> int:
-    """Return `value` as an int of at least `minimum`; floats and booleans are refused."""
+    """Return `value` as a 64-bit int of at least `minimum`; floats and booleans are refused."""
     expected = f"an integer of at least {minimum}"
     if isinstance(value, bool | np.bool_):
         raise ArgumentTypeError(argument, value, expected)
@@ -34,6 +36,8 @@ def count(argument: str, value: object, minimum: int = 1) -> int:
         raise ArgumentTypeError(argument, repr(value), expected) from None
     if integer < minimum:
         raise ArgumentError(argument, integer, expected)
+    if integer > LARGEST_INTEGER:
+        raise ArgumentError(argument, integer, f"{expected} and at most {LARGEST_INTEGER}")
     return integer
 
 
@@ -88,17 +92,21 @@ def hermitian(argument: str, value: npt.ArrayLike) -> ScalarArray:
     return hermitian_stack(argument, matrix)
 
 
-def hermitian_stack(argument: str, matrices: ScalarArray) -> ScalarArray:
-    """Return square matrices, leading axes a batch, made exactly Hermitian if they nearly are."""
+def hermitian_stack(argument: str, matrices: ScalarArray, axes: int = 2) -> ScalarArray:
+    """Return square matrices made exactly Hermitian if they nearly are.
+
+    The last `axes` axes are one item (a matrix, or one for each spin), those before a batch.
+    """
+    item = tuple(range(-axes, 0))
     adjoint = matrices.conj().swapaxes(-1, -2)
-    deviation = float(np.abs(matrices - adjoint).max(initial=0.0))
-    if deviation > SYMMETRY_TOLERANCE * np.abs(matrices).max(initial=0.0):
+    deviation = np.abs(matrices - adjoint).max(axis=item, initial=0.0)
+    if (deviation > SYMMETRY_TOLERANCE * np.abs(matrices).max(axis=item, initial=0.0)).any():
         raise ArgumentError(
             argument,
-            f"a deviation from Hermiticity of {deviation:.3g}",
+            f"a deviation from Hermiticity of {deviation.max():.3g}",
             "a Hermitian matrix (for real numbers: a symmetric one)",
         )
-    return np.asarray((matrices + adjoint) / 2, dtype=matrices.dtype)
+    return np.asarray(0.5 * matrices + 0.5 * adjoint, dtype=matrices.dtype)
 
 
 def symmetric(argument: str, value: npt.ArrayLike) -> RealArray:
@@ -144,10 +152,24 @@ def bonds(argument: str, value: npt.ArrayLike, sites: int) -> IndexArray:
 
 def indices(argument: str, value: npt.ArrayLike) -> npt.NDArray[np.uint64]:
     """Return integers counted from 0, of any shape."""
-    array = _integers(argument, value)
+    array = _as_array(argument, value, "integers")
+    if array.dtype == object and all(type(number) is int for number in array.flat):
+        raise ArgumentIndexError(argument, "an integer beyond 64 bits", "64-bit integers")
+    array = _integers(argument, array)
     if (array < 0).any():
         raise ArgumentIndexError(argument, array[array < 0][0], "integers counted from 0")
     return array.astype(np.uint64)
+
+
+def position(argument: str, value: object, length: int) -> int:
+    """Return one index from 0 to `length` - 1."""
+    try:
+        index = operator.index(value)  # type: ignore[arg-type]
+    except TypeError:
+        raise ArgumentTypeError(argument, repr(value), "an integer") from None
+    if not 0 <= index < length:
+        raise ArgumentIndexError(argument, f"index {index}", f"0 to {length - 1}")
+    return index
 
 
 def occupation_numbers(argument: str, value: npt.ArrayLike) -> npt.NDArray[np.uint32]:

@@ -58,6 +58,7 @@ def _attributes(ensemble: Ensemble) -> dict[str, Any]:
     return {
         "sector": repr(ensemble.hamiltonian.sector),
         "convention": CONVENTION,
+        "domain": "spin-resolved" if ensemble.hamiltonian.sector.spins == 2 else "spinless",
         "tolerance": ensemble._levels.tolerance,
         "seed": ensemble._levels.seed,
         "fockhull_version": _core.__version__,

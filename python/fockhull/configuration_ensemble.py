@@ -8,7 +8,8 @@ import numpy as np
 import numpy.typing as npt
 
 from fockhull import _arguments as arguments
-from fockhull.errors import ArgumentIndexError
+from fockhull._frozen import Frozen, read_only
+from fockhull._html import table
 from fockhull.sectors import Bosons, Sector
 
 __all__ = ["ConfigurationEnsemble"]
@@ -19,7 +20,7 @@ _Numbers = TypeVar("_Numbers", bound=npt.NDArray[Any])
 VERIFY_TOLERANCE = 1e-9
 
 
-class ConfigurationEnsemble:
+class ConfigurationEnsemble(Frozen):
     """An explicit ensemble of configurations with given occupations.
 
     A mixture of line-ups: the r configurations of lowest energy for a `potential`, in order,
@@ -35,10 +36,14 @@ class ConfigurationEnsemble:
         parts: tuple[RealArray, RealArray, RealArray, npt.NDArray[np.int64]],
     ) -> None:
         self._sector = sector
-        self._weights = weights
+        self._weights = read_only(weights)
         self._domain = domain
+        self._parts = parts
         self._line_up_probabilities, self._potentials = parts[:2]
         self._permutation_probabilities, self._permutations = parts[2:]
+
+    def __reduce__(self) -> tuple[Any, ...]:
+        return type(self), (self._sector, self._weights, self._domain, self._parts)
 
     @property
     def weights(self) -> RealArray:
@@ -67,8 +72,7 @@ class ConfigurationEnsemble:
         ArgumentIndexError
             If there is no such term.
         """
-        if not 0 <= term < len(self):
-            raise ArgumentIndexError("term", f"index {term}", f"0 to {len(self) - 1}")
+        term = arguments.position("term", term, len(self))
         line_up, permutation = divmod(term, len(self._permutations))
         return self._permuted(self._line_up(line_up), self._permutations[permutation])
 
@@ -113,6 +117,7 @@ class ConfigurationEnsemble:
         the sector, every permutation one of modes, and the occupations those given.
         """
         target = arguments.reals("occupations", occupations)
+        tol = arguments.positive("tol", tol)
         shares = (self._line_up_probabilities, self._permutation_probabilities)
         if any((p < -tol).any() or abs(p.sum() - 1.0) > tol for p in shares):
             return False
@@ -144,3 +149,13 @@ class ConfigurationEnsemble:
             f"ConfigurationEnsemble({len(self)} terms of {len(self._weights)} configurations, "
             f"{self._sector!r}, {self._domain})"
         )
+
+    def _repr_html_(self) -> str:
+        rows: list[tuple[str, object]] = [
+            ("sector", self._sector),
+            ("domain", self._domain),
+            ("configurations in each term", len(self._weights)),
+            ("probabilities", self.probabilities.round(6)),
+            ("occupations", self.occupations().round(6)),
+        ]
+        return table("Ensemble of configurations", rows)

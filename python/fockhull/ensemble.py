@@ -13,6 +13,7 @@ import numpy.typing as npt
 
 from fockhull import _arguments as arguments
 from fockhull import _core
+from fockhull._frozen import Frozen, read_only
 from fockhull._html import table
 from fockhull.errors import (
     ArgumentError,
@@ -70,7 +71,7 @@ class Levels:
     seed: int
 
 
-class Ensemble:
+class Ensemble(Frozen):
     """The r lowest states of a Hamiltonian and the ensemble that weights make of them.
 
     Made by `solve`. Every number comes with its certificate: `residuals` and `error_bounds`
@@ -87,7 +88,10 @@ class Ensemble:
         self._weights = weights
         for array in (levels.energies, levels.rows, levels.residuals, levels.error_bounds, weights):
             if array is not None:
-                array.flags.writeable = False
+                read_only(array)
+
+    def __reduce__(self) -> tuple[Any, ...]:
+        return type(self), (self._hamiltonian, self._levels, self._count, self._weights)
 
     @property
     def hamiltonian(self) -> Hamiltonian:
@@ -239,7 +243,8 @@ class Ensemble:
         """
         rows = np.ascontiguousarray(self._levels.rows[: self._count])
         # rounding must not leave a negative square
-        return np.maximum(_core.spin_squared(self._hamiltonian.sector._core, rows), 0.0)
+        squares = _core.spin_squared(self._hamiltonian.sector._core, rows)
+        return read_only(np.maximum(squares, 0.0))
 
     @property
     def total_spin(self) -> RealArray:

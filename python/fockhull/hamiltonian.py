@@ -97,6 +97,7 @@ class Hamiltonian:
         d, spins = self._sector.modes, self._sector.spins
         shapes = [(d, d)] + ([(2, d, d)] if spins == 2 else [])
         h = arguments.tensor("one_body", one_body, *shapes)
+        h = arguments.hermitian_stack("one_body", h, axes=h.ndim)
         h.flags.writeable = False
         self._one_body = h
         self._core = _core.Hamiltonian(
@@ -113,7 +114,7 @@ class Hamiltonian:
 
     @property
     def one_body(self) -> ScalarArray:
-        """The one-body terms as given (read-only)."""
+        """The one-body terms, exactly Hermitian, in the shape given (read-only)."""
         return self._one_body
 
     @property

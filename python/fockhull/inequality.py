@@ -10,6 +10,7 @@ import numpy.typing as npt
 
 from fockhull import _arguments as arguments
 from fockhull import _core
+from fockhull._frozen import FrozenArrays, read_only
 from fockhull.errors import ArgumentError
 
 __all__ = ["Inequality", "TightestInequality"]
@@ -18,7 +19,7 @@ RealArray: TypeAlias = npt.NDArray[np.float64]
 
 
 @dataclass(frozen=True, eq=False, repr=False)
-class Inequality:
+class Inequality(FrozenArrays):
     """A facet: <coefficients, n> <= bound for occupations n sorted decreasingly (per spin)."""
 
     coefficients: npt.NDArray[np.int64]
@@ -40,10 +41,8 @@ class Inequality:
 
     @classmethod
     def _wrap(cls, core: _core.Inequality, shape: tuple[int, ...]) -> Inequality:
-        coefficients = core.coefficients.reshape(shape)
-        coefficients.flags.writeable = False
         return cls(
-            coefficients,
+            read_only(core.coefficients.reshape(shape)),
             core.bound,
             core.bound_constant,
             tuple(core.bound_weights),

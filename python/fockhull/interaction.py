@@ -69,6 +69,8 @@ class Interaction:
 
     __slots__ = ("_core", "_kinds", "_sector")
 
+    __array_ufunc__ = None  # NumPy numbers scale an interaction, NumPy arrays are refused
+
     def __init__(
         self,
         sector: Sector,

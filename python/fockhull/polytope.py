@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterator
+from contextlib import contextmanager
 from functools import partial
 from typing import Any, Literal, TypeAlias
 
@@ -10,6 +12,7 @@ import numpy.typing as npt
 
 from fockhull import _arguments as arguments
 from fockhull import _core
+from fockhull._frozen import read_only
 from fockhull._html import table
 from fockhull.errors import ArgumentError, ArgumentTypeError, ComputationError, ConvergenceError
 from fockhull.inequality import Inequality, TightestInequality
@@ -145,8 +148,10 @@ class ExclusionPolytope:
         -------
         bool or numpy.ndarray of bool
         """
-        values, lead, _ = self._points(density_matrix, occupations)
-        inside = self._core.contains(values, arguments.positive("tol", tol))
+        values, lead, orbitals = self._points(density_matrix, occupations)
+        tolerance = arguments.positive("tol", tol)
+        with _refusing(orbitals):
+            inside = self._core.contains(values, tolerance)
         return inside.reshape(lead) if lead else bool(inside[0])
 
     def project(
@@ -178,7 +183,8 @@ class ExclusionPolytope:
             If the certified accuracy was not reached (`result` is the partial result).
         """
         values, lead, orbitals = self._points(density_matrix, occupations)
-        core = self._core.project(values)
+        with _refusing(orbitals):
+            core = self._core.project(values)
         result = Projection(self, core, lead, orbitals)
         if not all(core.converged):
             raise ConvergenceError(
@@ -213,15 +219,16 @@ class ExclusionPolytope:
             The factor (allowed exactly when it is at least 1) with the face met, in words
             where the inequalities are known.
         """
-        values, lead, _ = self._points(density_matrix, occupations)
-        factor, lower, boundary, normal = self._core.stretch(values)
+        values, lead, orbitals = self._points(density_matrix, occupations)
+        with _refusing(orbitals):
+            factor, lower, boundary, normal = self._core.stretch(values)
         shape = lead + self.shape
-        points = boundary.reshape(shape)
+        points = read_only(boundary.reshape(shape))
         return Stretch(
-            factor.reshape(lead) if lead else float(factor[0]),
-            lower.reshape(lead) if lead else float(lower[0]),
+            read_only(factor.reshape(lead)) if lead else float(factor[0]),
+            read_only(lower.reshape(lead)) if lead else float(lower[0]),
             points,
-            normal.reshape(shape),
+            read_only(normal.reshape(shape)),
             partial(self._constraints, points, np.isfinite(factor) & (factor > 0)),
         )
 
@@ -326,7 +333,7 @@ class ExclusionPolytope:
             for row, is_met in zip(rows, met, strict=True)
         ]
         lead = points.shape[: points.ndim - len(self.shape)]
-        return np.array(words, dtype=object).reshape(lead) if lead else words[0]
+        return read_only(np.array(words, dtype=object).reshape(lead)) if lead else words[0]
 
     def _points(
         self, density_matrix: npt.ArrayLike | None, occupations: npt.ArrayLike | None
@@ -345,7 +352,7 @@ class ExclusionPolytope:
         if gamma.shape[-len(shape) :] != shape:
             expected = f"shape (..., {', '.join(map(str, shape))}) in the {self._domain} domain"
             raise ArgumentError("density_matrix", f"shape {gamma.shape}", expected)
-        gamma = arguments.hermitian_stack("density_matrix", gamma)
+        gamma = arguments.hermitian_stack("density_matrix", gamma, axes=len(shape))
         try:
             numbers, orbitals = np.linalg.eigh(gamma)
         except np.linalg.LinAlgError as error:
@@ -377,6 +384,18 @@ class ExclusionPolytope:
 
     def __reduce__(self) -> tuple[Any, ...]:
         return type(self), (self._sector, self._weights, self._domain)
+
+
+@contextmanager
+def _refusing(orbitals: ScalarArray | None) -> Iterator[None]:
+    """Name the density matrix in errors about its occupations."""
+    try:
+        yield
+    except ArgumentError as error:
+        if orbitals is None:
+            raise
+        given = f"natural occupations with {error.given}"
+        raise ArgumentError("density_matrix", given, error.expected) from None
 
 
 def _checked_domain(sector: Sector, domain: str | None) -> str:

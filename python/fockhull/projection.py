@@ -11,6 +11,9 @@ import numpy as np
 import numpy.typing as npt
 
 from fockhull import _core
+from fockhull._frozen import Frozen, FrozenArrays, read_only
+from fockhull._html import table
+from fockhull._projected import Projected
 from fockhull.configuration_ensemble import ConfigurationEnsemble
 from fockhull.errors import ArgumentError, ArgumentIndexError, ArgumentTypeError
 
@@ -33,7 +36,7 @@ class Support(NamedTuple):
 
 
 @dataclass(frozen=True, eq=False)
-class Stretch:
+class Stretch(FrozenArrays):
     """How far occupations can be scaled about the centre before they leave the polytope.
 
     Compares and converts like its `value`; the occupations are allowed exactly when it is
@@ -83,8 +86,14 @@ class Stretch:
             return f"Stretch({np.size(self.value)} points, {np.min(self.value):.6g} at least)"
         return f"Stretch({self.value:.10g})"
 
+    def _repr_html_(self) -> str:
+        if np.ndim(self.value):
+            return table("Stretch", [("points", np.size(self.value)), ("factors", self.value)])
+        limit = self.constraint or "a face not known in words"
+        return table("Stretch", [("factor", self.value), ("limited by", limit)])
 
-class Projection:
+
+class Projection(Frozen):
     """The nearest allowed occupations (or density matrix), with their certificate.
 
     Everything has the leading batch axes of what was projected.
@@ -93,7 +102,7 @@ class Projection:
     def __init__(
         self,
         polytope: ExclusionPolytope,
-        core: _core.Projections,
+        core: _core.Projections | Projected,
         lead: tuple[int, ...],
         orbitals: ScalarArray | None,
         member: int = 0,
@@ -104,9 +113,14 @@ class Projection:
         self._orbitals = orbitals
         self._member = member
 
+    def __reduce__(self) -> tuple[Any, ...]:
+        members = range(len(self._core.converged)) if self._lead else [self._member]
+        core = Projected.copy(self._core, members)
+        return type(self), (self._polytope, core, self._lead, self._orbitals)
+
     def _shaped(self, array: RealArray) -> RealArray:
         rows = array if self._lead else array[self._member]
-        return rows.reshape(self._lead + self._polytope.shape)
+        return read_only(rows.reshape(self._lead + self._polytope.shape))
 
     def _numbers(self, array: RealArray) -> Any:
         return array.reshape(self._lead) if self._lead else float(array[self._member])
@@ -153,7 +167,7 @@ class Projection:
             raise ArgumentError("density_matrix", "occupations only", "a projected density matrix")
         u = self._orbitals
         scaled = u * self.occupations[..., np.newaxis, :]
-        return scaled @ u.conj().swapaxes(-1, -2)
+        return read_only(scaled @ u.conj().swapaxes(-1, -2))
 
     @property
     def ensemble(self) -> ConfigurationEnsemble:
@@ -185,9 +199,10 @@ class Projection:
         indices = index if isinstance(index, tuple) else (index,)
         try:
             member = int(np.ravel_multi_index(indices, self._lead, mode="raise"))
-        except ValueError:
+        except (ValueError, TypeError) as error:
             expected = f"an index into a batch of shape {self._lead}"
-            raise ArgumentIndexError("index", index, expected) from None
+            refusal = ArgumentTypeError if isinstance(error, TypeError) else ArgumentIndexError
+            raise refusal("index", repr(index), expected) from None
         orbitals = None if self._orbitals is None else self._orbitals[indices]
         return Projection(self._polytope, self._core, (), orbitals, member)
 
@@ -195,3 +210,12 @@ class Projection:
         if self._lead:
             return f"Projection(batch of shape {self._lead}, {self._polytope!r})"
         return f"Projection(distance {self.distance:.6g}, gap {self.gap:.1e}, {self._polytope!r})"
+
+    def _repr_html_(self) -> str:
+        rows: list[tuple[str, object]] = [
+            ("onto", self._polytope),
+            ("distance", self.distance),
+            ("gap", self.gap),
+            ("nearest occupations", self.occupations.round(6)),
+        ]
+        return table("Projection", rows)

@@ -303,7 +303,9 @@ class SpinHalfFermions(Sector):
         _set(self, "orbitals", arguments.count("orbitals", self.orbitals))
         _set(self, "modes", self.orbitals)
         given: object = self.particles
-        if not isinstance(given, Sequence | np.ndarray) or len(given) != 2:
+        if isinstance(given, np.ndarray):
+            given = given.tolist()
+        if not isinstance(given, Sequence) or len(given) != 2:
             raise ArgumentTypeError("particles", repr(given), "a pair of integers (up, down)")
         up, down = (arguments.count("particles", n, minimum=0) for n in given)
         _set(self, "particles", (up, down))

@@ -210,7 +210,7 @@ def test_batches(polytope: Polytope, rng: Any) -> None:
         assert stretch.value[index] == polytope.stretch(occupations=points[index]).value
         assert allowed[index] == polytope.contains(occupations=points[index])
         assert support.value[index] == polytope.support(points[index]).value
-    assert len(projection.ensemble) == 6
+        assert projection[index].ensemble.verify(alone.occupations)
 
 
 @given(polytopes(), generators(), st.floats(-2.0, 2.0))

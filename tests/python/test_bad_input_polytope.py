@@ -21,6 +21,7 @@ RESOLVED = fh.ExclusionPolytope(S, W, domain="spin-resolved")
 SUMMED = fh.ExclusionPolytope(S, W, domain="spin-summed")
 N = np.array([0.9, 0.7, 0.3, 0.1])
 GAMMA = np.diag(N)
+BATCH = P.project(occupations=[N, N])
 ENSEMBLE = P.project(occupations=[1.2, 0.9, 0.0, -0.1]).ensemble
 
 
@@ -43,7 +44,7 @@ EVERY_POINT_METHOD = pytest.mark.parametrize("method", POINT_METHODS, ids=lambda
         (VALUE, "domain", lambda: fh.ExclusionPolytope(S, W, domain="spin"), "spin-summed"),
         (VALUE, "domain", lambda: fh.ExclusionPolytope(S, W, domain=["spin-summed"])),
         (VALUE, "domain", lambda: fh.ExclusionPolytope(F, W, domain="spin-summed")),
-        (VALUE, "domain", lambda: fh.ExclusionPolytope(F, W, domain="spinless")),
+        (VALUE, "domain", lambda: fh.ExclusionPolytope(S, W, domain="spinless"), "spin-summed"),
         (VALUE, "h", lambda: P.support([0.0, 1.0, 2.0]), "4"),
         (VALUE, "h", lambda: P.support(1.0)),
         (VALUE, "h", lambda: P.support(np.zeros((4, 1)))),
@@ -62,6 +63,19 @@ EVERY_POINT_METHOD = pytest.mark.parametrize("method", POINT_METHODS, ids=lambda
         (VALUE, "density_matrix", lambda: P.stretch(GAMMA * 1.1)),
         (VALUE, "occupations", lambda: RESOLVED.stretch(occupations=[N, N])),
         (VALUE, "density_matrix", lambda: P.project(occupations=N).density_matrix),
+        (VALUE, "ensemble", lambda: BATCH.ensemble, "[index]"),
+        (INDEX, "index", lambda: BATCH[2]),
+        (INDEX, "index", lambda: BATCH[-3]),
+        (INDEX, "index", lambda: BATCH[0, 0]),
+        (TYPE, "index", lambda: BATCH[0.0]),
+        (TYPE, "index", lambda: BATCH["first"]),
+        (TYPE, "projection", lambda: len(P.project(occupations=N))),
+        (VALUE, "occupations", lambda: P.tightest(occupations=[N, N]), "single"),
+        (VALUE, "limit", lambda: P.inequalities(limit=0)),
+        (TYPE, "limit", lambda: P.generating_vertices(limit=2.0)),
+        (TYPE, "limit", lambda: P.line_ups(limit="all")),
+        (VALUE, "r", lambda: P.new_at(0)),
+        (TYPE, "r", lambda: P.new_at(1.0)),
         (INDEX, "term", lambda: ENSEMBLE.configurations(len(ENSEMBLE)), "0 to"),
         (INDEX, "term", lambda: ENSEMBLE.configurations(-1)),
         (TYPE, "term", lambda: ENSEMBLE.configurations(0.0)),
