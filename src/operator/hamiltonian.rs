@@ -22,6 +22,8 @@ use std::sync::{Arc, OnceLock};
 const STORED_BYTES: u128 = 1 << 30;
 /// Spinless particles from this dimension on go through low and high modes.
 const SPLIT_DIMENSION: usize = 2_000;
+/// if classes with equally many low particles have so many configurations on average.
+const SPLIT_CLASS_SIZE: usize = 50;
 
 const STORED: &str = "stored matrix";
 const ROW_BY_ROW: &str = "row by row";
@@ -137,8 +139,10 @@ impl<T: Scalar> Hamiltonian<T> {
     /// groups have many configurations, but only single hops cross between them.
     fn splits(&self, space: &ModeSpace) -> bool {
         let moves_pairs = |w: &Arc<Interaction<T>>| w.tensor().is_some() || w.has_entries();
+        // there are at most as many classes as ways to share the particles
+        let classes = space.particles() + 1;
         space.modes() > 1
-            && space.dimension() >= SPLIT_DIMENSION
+            && space.dimension() >= SPLIT_DIMENSION.max(SPLIT_CLASS_SIZE * classes)
             && !self.interaction.as_ref().is_some_and(moves_pairs)
     }
 

@@ -128,12 +128,26 @@ impl<T: Scalar> Interaction<T> {
         for (index, value) in other.entries() {
             *entries.entry(index).or_insert_with(T::zero) += value;
         }
-        Ok(Interaction {
+        Interaction {
             sector: self.sector,
             density_density: sum(&self.density_density, &other.density_density),
             tensor: sum(&self.tensor, &other.tensor),
             entries,
-        })
+        }
+        .checked("interaction")
+    }
+
+    /// Refuses a sum or multiple that overflows.
+    fn checked(self, argument: &'static str) -> Result<Self> {
+        let finite = self.entries.values().all(|x| x.is_finite())
+            && self.tensor.iter().flatten().all(|x| x.is_finite())
+            && self.density_density.iter().flatten().all(|x| x.is_finite());
+        if finite {
+            Ok(self)
+        } else {
+            let given = "numbers whose sum or multiple overflows";
+            Err(Error::argument(argument, given, "a finite interaction"))
+        }
     }
 
     /// A real multiple.
@@ -152,7 +166,7 @@ impl<T: Scalar> Interaction<T> {
             v.mapv_inplace(|x| x * factor);
         }
         scaled.entries.values_mut().for_each(|v| *v = *v * factor);
-        Ok(scaled)
+        scaled.checked("factor")
     }
 
     /// The same interaction with elements of another type, if nothing is lost.

@@ -149,13 +149,15 @@ impl<T: Scalar> ModeTerms<T> {
     /// The diagonal matrix element of a configuration.
     #[inline]
     pub fn diagonal(&self, walker: &Walker<'_>) -> f64 {
-        let modes = walker.modes();
+        let (occupied, occupations) = (walker.occupied(), walker.occupations());
+        let count = |mode: u32| f64::from(occupations[mode as usize]);
         let mut sum = 0.0;
-        for (i, &p) in modes.iter().enumerate() {
-            let row = self.density.row(p as usize);
-            sum += self.level[p as usize];
-            // equal modes of bosons are counted here too: n (n - 1) / 2 pairs
-            sum += modes[i + 1..].iter().map(|&q| row[q as usize]).sum::<f64>();
+        for (i, &p) in occupied.iter().enumerate() {
+            let (n, row) = (count(p), self.density.row(p as usize));
+            let others = occupied[i + 1..].iter();
+            let felt: f64 = others.map(|&q| row[q as usize] * count(q)).sum();
+            let own = row[p as usize] * (n - 1.0) / 2.0;
+            sum += n * (self.level[p as usize] + felt + own);
         }
         sum
     }
@@ -164,12 +166,10 @@ impl<T: Scalar> ModeTerms<T> {
     /// an index J may come more than once, its contributions add up.
     #[inline]
     pub fn visit_off_diagonal(&self, walker: &Walker<'_>, mut visit: impl FnMut(usize, T)) {
-        let occupied = walker.modes();
+        let (occupied, occupations) = (walker.occupied(), walker.occupations());
         let n = self.level.len();
-        // repeated modes (bosons only) are met once
-        let repeats = |j: usize, first: usize| j > first && occupied[j - 1] == occupied[j];
-        for i in (0..occupied.len()).filter(|&i| !repeats(i, 0)) {
-            let q = occupied[i] as usize;
+        for &q in occupied {
+            let q = q as usize;
             for &(p, value) in &self.hops[q] {
                 if let Some((index, factor)) = walker.hop(p, q) {
                     visit(index, value * factor);
@@ -179,10 +179,13 @@ impl<T: Scalar> ModeTerms<T> {
         if !self.has_pair_hops {
             return;
         }
-        for i in (0..occupied.len()).filter(|&i| !repeats(i, 0)) {
-            for j in (i + 1..occupied.len()).filter(|&j| !repeats(j, i + 1)) {
-                let pair = [occupied[i] as usize, occupied[j] as usize];
-                for &(created, value) in &self.pair_hops[pair[0] * n + pair[1]] {
+        for (i, &r) in occupied.iter().enumerate() {
+            let r = r as usize;
+            // two particles of one mode: bosons only
+            let first = if occupations[r] > 1 { i } else { i + 1 };
+            for &s in &occupied[first..] {
+                let pair = [r, s as usize];
+                for &(created, value) in &self.pair_hops[r * n + pair[1]] {
                     if let Some((index, factor)) = walker.pair_hop(created, pair) {
                         visit(index, value * factor);
                     }

@@ -93,6 +93,7 @@ impl ModeSpace {
             space: self,
             positions: vec![0; particles],
             modes: vec![0; particles],
+            occupied: Vec::with_capacity(particles.min(self.modes)),
             occupations: vec![0; self.modes],
             below: vec![0; self.modes + 1],
             prefix: vec![0; SHIFTS * (particles + 1)],
@@ -119,6 +120,7 @@ pub struct Walker<'a> {
     space: &'a ModeSpace,
     positions: Vec<u32>,
     modes: Vec<u32>,
+    occupied: Vec<u32>,
     occupations: Vec<u32>,
     /// Particles in modes below each.
     below: Vec<u32>,
@@ -138,6 +140,11 @@ impl Walker<'_> {
         &self.modes
     }
 
+    /// Modes with particles, increasing, each once.
+    pub fn occupied(&self) -> &[u32] {
+        &self.occupied
+    }
+
     /// Particles in each mode.
     pub fn occupations(&self) -> &[u32] {
         &self.occupations
@@ -153,6 +160,8 @@ impl Walker<'_> {
             };
             self.occupations[*mode as usize] += 1;
         }
+        self.occupied.clone_from(&self.modes);
+        self.occupied.dedup();
         let mut sum = 0;
         for (mode, &count) in self.occupations.iter().enumerate() {
             self.below[mode] = sum;
@@ -166,11 +175,11 @@ impl Walker<'_> {
         let particles = self.modes.len();
         for (k, sums) in self.prefix.chunks_exact_mut(particles + 1).enumerate() {
             for (i, &mode) in self.modes.iter().enumerate() {
-                // an index outside the list is never reached by a legal move
+                // what no legal move reaches does not matter
                 let shifted = (i + k).wrapping_sub(NO_SHIFT);
                 let term = if shifted < particles {
                     let slot = self.space.slot(mode as usize, shifted);
-                    self.space.ranking.term(shifted, slot)
+                    self.space.ranking.term_or_zero(shifted, slot)
                 } else {
                     0
                 };

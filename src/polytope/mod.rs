@@ -170,7 +170,7 @@ impl ExclusionPolytope {
         match occupations.iter().find(|n| n.abs() > limit) {
             Some(n) => Err(Error::argument(
                 ARGUMENT,
-                n,
+                format!("{n:e}"),
                 format!("occupation numbers (magnitudes above {limit:e} are refused)"),
             )),
             None => Ok(()),

@@ -1,6 +1,7 @@
 //! Sectors and their configurations.
 
 use super::door::enter;
+use crate::memory;
 use crate::sector as core;
 use num_bigint::BigUint;
 use numpy::ndarray::{Array1, Array3, Axis};
@@ -111,6 +112,8 @@ impl Sector {
         let energies = energies.as_array();
         let (values, occupations) = enter(py, || {
             let lowest = self.inner.lowest_configurations(energies, r)?;
+            let numbers = r as u128 * (self.inner.spins() * self.inner.modes()) as u128;
+            memory::require("the occupations of the configurations", numbers * 12)?;
             let values = Array1::from(lowest.energies().to_vec());
             Ok((values, lowest.occupations().mapv(i64::from)))
         })?;

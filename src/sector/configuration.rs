@@ -33,8 +33,8 @@ pub enum Sector {
     },
 }
 
-/// Numbers of modes and particles are limited so that positions fit 32 bits.
-const LARGEST: usize = 1 << 30;
+/// Numbers of modes and particles are limited so that dimensions can be worked out.
+const LARGEST: usize = 1 << 24;
 
 impl Sector {
     /// Spinless fermions, at most one particle a mode.

@@ -10,6 +10,7 @@
 
 use super::configuration::Sector;
 use crate::error::{Error, Result};
+use crate::memory;
 use crate::weights::{CompensatedSum, compensated_sum};
 use ndarray::{Array2, Array3, ArrayView2};
 use num_bigint::BigUint;
@@ -25,12 +26,15 @@ pub struct LowestConfigurations {
     nodes: Vec<[u32; 2]>,
 }
 
+/// Nodes, candidates and queue entries, for each configuration found.
+const BYTES_PER_CONFIGURATION: u128 = 160;
+
 impl Sector {
     /// The `count` configurations of lowest energy for one-particle energies `(spins, modes)`.
     ///
     /// # Errors
     /// [`Error::Argument`] for a wrong shape, energies that are not finite, or a count of zero
-    /// or above the dimension.
+    /// or above the dimension; [`Error::Memory`] if the search does not fit.
     pub fn lowest_configurations(
         &self,
         energies: ArrayView2<'_, f64>,
@@ -63,6 +67,10 @@ impl Sector {
                 format!("1 to {dimension}, the dimension (and below 2^32)"),
             ));
         }
+        memory::require(
+            format!("the search for the {count} lowest configurations"),
+            count as u128 * BYTES_PER_CONFIGURATION,
+        )?;
         let streams: Vec<Stream> = energies
             .rows()
             .into_iter()

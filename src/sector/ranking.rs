@@ -1,7 +1,11 @@
 //! The combinatorial number system: the colexicographic rank of strictly increasing sets.
 
 use crate::error::{Error, Result};
+use crate::memory;
 use num_bigint::BigUint;
+
+/// Below this many factors they are multiplied one by one.
+const FEW_FACTORS: usize = 64;
 
 /// Exact binomial coefficient.
 pub fn binomial(n: usize, k: usize) -> BigUint {
@@ -9,12 +13,51 @@ pub fn binomial(n: usize, k: usize) -> BigUint {
         return BigUint::ZERO;
     }
     let k = k.min(n - k);
-    let mut value = BigUint::from(1u32);
-    for i in 0..k {
-        value *= BigUint::from(n - i);
-        value /= BigUint::from(i + 1);
+    if k < FEW_FACTORS {
+        return (0..k).fold(BigUint::from(1u32), |value, i| value * (n - i) / (i + 1));
     }
-    value
+    let factors: Vec<BigUint> = primes(n)
+        .into_iter()
+        .map(|p| BigUint::from(p).pow(multiplicity(n, k, p)))
+        .filter(|factor| *factor > BigUint::from(1u32))
+        .collect();
+    product(&factors)
+}
+
+/// Multiplicity of the prime p in the binomial coefficient (Legendre's formula).
+fn multiplicity(n: usize, k: usize, p: usize) -> u32 {
+    let mut power = p;
+    let mut count = 0;
+    while power <= n {
+        count += n / power - k / power - (n - k) / power;
+        power = power.saturating_mul(p);
+    }
+    count as u32
+}
+
+/// Primes up to n (the sieve of Eratosthenes).
+fn primes(n: usize) -> Vec<usize> {
+    let mut composite = vec![false; n + 1];
+    let mut list = Vec::new();
+    for p in 2..=n {
+        if !composite[p] {
+            list.push(p);
+            (p * p..=n).step_by(p).for_each(|m| composite[m] = true);
+        }
+    }
+    list
+}
+
+/// A product by halves, so that factors of equal length meet.
+fn product(factors: &[BigUint]) -> BigUint {
+    match factors {
+        [] => BigUint::from(1u32),
+        [only] => only.clone(),
+        _ => {
+            let (left, right) = factors.split_at(factors.len() / 2);
+            product(left) * product(right)
+        }
+    }
 }
 
 /// Numbers the subsets of `size` slots out of `slots` by their colexicographic rank.
@@ -23,7 +66,9 @@ pub struct SubsetRanking {
     slots: usize,
     size: usize,
     count: u64,
-    /// Row i holds C(slot, i + 1) for every slot; saturated, which only unreachable entries are.
+    /// Slots that the i-th smallest element can take: i to i + width - 1.
+    width: usize,
+    /// Row i holds C(slot, i + 1) for the slots that element i can take.
     table: Vec<u64>,
 }
 
@@ -31,27 +76,31 @@ impl SubsetRanking {
     /// Prepares the table of binomial coefficients.
     ///
     /// # Errors
-    /// [`Error::TooManyConfigurations`] if the number of subsets does not fit in 64 bits.
+    /// [`Error::TooManyConfigurations`] if the number of subsets does not fit in 64 bits,
+    /// [`Error::Memory`] if the table does not fit.
     pub fn new(slots: usize, size: usize) -> Result<Self> {
         let exact = binomial(slots, size);
         let count =
             u64::try_from(&exact).map_err(|_| Error::TooManyConfigurations { dimension: exact })?;
-        let mut table = vec![0u64; slots * size];
+        let width = slots - size + 1;
+        memory::require("the ranking table", size as u128 * width as u128 * 8)?;
+        let mut table = vec![0u64; width * size];
         for i in 0..size {
-            for slot in 1..slots {
-                // Pascal's rule: C(slot, i+1) = C(slot-1, i+1) + C(slot-1, i)
+            for offset in 1..width {
+                // Pascal's rule for slot = i + offset: C(slot, i+1) = C(slot-1, i+1) + C(slot-1, i)
                 let above = if i == 0 {
                     1
                 } else {
-                    table[(i - 1) * slots + slot - 1]
+                    table[(i - 1) * width + offset]
                 };
-                table[i * slots + slot] = table[i * slots + slot - 1].saturating_add(above);
+                table[i * width + offset] = table[i * width + offset - 1] + above;
             }
         }
         Ok(SubsetRanking {
             slots,
             size,
             count,
+            width,
             table,
         })
     }
@@ -74,7 +123,18 @@ impl SubsetRanking {
     /// What the `index`-th smallest chosen slot adds to the rank.
     #[inline]
     pub fn term(&self, index: usize, slot: usize) -> u64 {
-        self.table[index * self.slots + slot]
+        self.table[index * self.width + slot - index]
+    }
+
+    /// The same, zero for a slot that this element cannot take.
+    #[inline]
+    pub fn term_or_zero(&self, index: usize, slot: usize) -> u64 {
+        match slot.checked_sub(index) {
+            Some(offset) if offset < self.width && index < self.size => {
+                self.table[index * self.width + offset]
+            }
+            _ => 0,
+        }
     }
 
     /// Rank of a strictly increasing set.
@@ -92,14 +152,15 @@ impl SubsetRanking {
     pub fn unrank(&self, rank: u64, positions: &mut [u32]) {
         debug_assert!(rank < self.count);
         let mut rest = rank;
-        let mut below = self.slots;
+        let mut reach = self.width;
         for i in (0..self.size).rev() {
-            let row = &self.table[i * self.slots..i * self.slots + below];
+            let row = &self.table[i * self.width..i * self.width + reach];
             // the largest slot whose term does not exceed the rest
-            let slot = row.partition_point(|&term| term <= rest) - 1;
-            positions[i] = slot as u32;
-            rest -= row[slot];
-            below = slot;
+            let offset = row.partition_point(|&term| term <= rest) - 1;
+            positions[i] = (i + offset) as u32;
+            rest -= row[offset];
+            // the next smaller element stays below this one
+            reach = offset + 1;
         }
     }
 
@@ -130,6 +191,13 @@ mod tests {
             binomial(100, 50).to_string(),
             "100891344545564193334812497256"
         );
+    }
+
+    #[test]
+    fn large_binomials_agree_with_pascal() {
+        let (n, k) = (300, 131);
+        assert_eq!(binomial(n, k), binomial(n - 1, k - 1) + binomial(n - 1, k));
+        assert_eq!(binomial(200, 63) * 137u32, binomial(200, 64) * 64u32);
     }
 
     #[test]

@@ -104,6 +104,7 @@ def read_only(array: Array) -> Array:
         (TYPE, "entries", lambda: entries([[0, 0, 0, 0]], ["1"])),
         (TYPE, "entries", lambda: fh.Interaction(B, entries=5), "pair"),
         (TYPE, "entries", lambda: fh.Interaction(B, entries=([[0] * 4], [1.0], [1.0])), "pair"),
+        (VALUE, "factor", lambda: 1e200 * (1e200 * W), "finite"),
         (VALUE, "other", lambda: W + fh.Interaction(S, density_density=V), "Bosons"),
         (VALUE, "factor", lambda: np.nan * W, "finite"),
         (VALUE, "factor", lambda: W * np.inf, "finite"),

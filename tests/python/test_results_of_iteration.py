@@ -130,3 +130,24 @@ def test_certificates_of_the_iterative_solve() -> None:
         first = column[np.abs(column) >= top - 1e-8][0]
         assert first.real > 0.0
         assert first.imag == 0.0
+
+
+@pytest.mark.parametrize("unit", [1e-9, 1e-3, 1e6])
+def test_the_unit_of_energy_does_not_matter(unit: float) -> None:
+    """Energies are in the unit of h and v, never assumed to be of order one."""
+    scaled = fh.Hamiltonian(
+        unit * CHAIN.one_body, unit * CHAIN.interaction, constant=unit * CHAIN.constant
+    )
+    e, other = fh.solve(CHAIN, WEIGHTS), fh.solve(scaled, WEIGHTS)
+    assert_allclose(other.energies / unit, e.energies, rtol=0.0, atol=1e-9)
+    assert_allclose(other.density_matrix, e.density_matrix, rtol=0.0, atol=1e-7)
+    assert other.multiplets == e.multiplets
+
+
+def test_large_multiplets_are_counted() -> None:
+    """The ground level has 20 states, more than are completed: still none lies below."""
+    sector = fh.Fermions(13, 5)
+    shells = np.array([0.0, 1, 1, 1, 2, 2, 2, 2, 2, 0.0, 1, 1, 1])
+    e = fh.solve(fh.Hamiltonian(np.diag(shells), sector=sector), levels=1)
+    assert_allclose(e.energies, [3.0], rtol=0.0, atol=1e-9)
+    assert e.level_count.kind == "probed"
