@@ -48,7 +48,7 @@ class ArgumentTypeError(_RefusalError, TypeError):
     """An argument of a wrong type."""
 
 
-class SizeError(FockhullError, MemoryError):
+class SizeError(FockhullError, ValueError):
     """Work too large for memory or for 64-bit indices, refused before it starts."""
 
 

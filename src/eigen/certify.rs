@@ -83,6 +83,7 @@ impl<T: Scalar> Search<'_, '_, T> {
 
     /// The best there is so far.
     pub fn give_up(mut self, status: Status) -> Result<Levels<T>> {
+        self.run.refresh()?;
         let levels = self.levels();
         let found = levels.len().min(self.goal.levels);
         let kept = levels.len().min(found + 1);

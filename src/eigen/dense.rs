@@ -15,11 +15,20 @@ const METHOD: &str = "dense";
 
 /// Whether the request is served by a dense matrix: small, or moderate with many levels wanted.
 pub(super) fn suits<T: Scalar>(dimension: usize, request: &LevelRequest<'_, T>) -> bool {
-    let bytes = 3 * dimension as u128 * dimension as u128 * size_of::<T>() as u128;
-    let fits = request.memory_limit == 0 || bytes <= request.memory_limit as u128;
     let small = dimension <= request.dense_limit;
     let many = dimension / 4 <= request.dense_limit && request.levels >= dimension / 8;
-    fits && (small || many && request.dense_limit > 0)
+    fits(dimension, request) && (small || many && request.dense_limit > 0)
+}
+
+/// Whether a dense matrix may take over from an iteration that has used twice its products.
+pub(super) fn can_replace<T: Scalar>(dimension: usize, request: &LevelRequest<'_, T>) -> bool {
+    let moderate = dimension / 4 <= request.dense_limit && request.dense_limit > 0;
+    moderate && fits(dimension, request) && request.max_products >= 3 * dimension
+}
+
+fn fits<T: Scalar>(dimension: usize, request: &LevelRequest<'_, T>) -> bool {
+    let bytes = 3 * dimension as u128 * dimension as u128 * size_of::<T>() as u128;
+    request.memory_limit == 0 || bytes <= request.memory_limit as u128
 }
 
 /// The lowest levels from the full matrix; the count of levels is proved.

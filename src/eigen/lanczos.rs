@@ -15,6 +15,8 @@ use rand_chacha::ChaCha8Rng;
 
 /// Weight of the random vector that joins given starts: it must reach what they do not contain.
 const RANDOM_PART: f64 = 0.01;
+/// Ritz pairs lag behind by at most the size of the basis over this.
+const RITZ_INTERVAL: usize = 16;
 
 /// Ritz pairs of the basis as it stands: levels, coefficients in columns, residual norms.
 #[derive(Clone)]
@@ -51,19 +53,29 @@ pub(super) struct BlockLanczos<'a, T: Scalar> {
     coupling: Array2<T>,
     /// The latest Ritz pairs.
     pub ritz: Ritz<T>,
+    /// Whether they are those of the whole basis.
+    fresh: bool,
     /// Estimate from below of the norm of the operator.
     pub scale: f64,
     /// Products with the operator so far.
     pub products: usize,
+    /// Residual norm to be reached: overlaps in the basis must not spoil it.
+    accuracy: f64,
     generator: ChaCha8Rng,
 }
 
 impl<'a, T: Scalar> BlockLanczos<'a, T> {
-    /// Nothing in memory yet; `rows` is the number of rows to reserve.
+    /// Nothing in memory yet; `rows` is the number of rows to reserve, `accuracy` the residual
+    /// norm to be reached.
     ///
     /// # Errors
     /// [`Error::Memory`] if the reservation fails.
-    pub fn new(operator: &'a dyn LinearOperator<T>, rows: usize, seed: u64) -> Result<Self> {
+    pub fn new(
+        operator: &'a dyn LinearOperator<T>,
+        rows: usize,
+        accuracy: f64,
+        seed: u64,
+    ) -> Result<Self> {
         let dimension = operator.dimension();
         let mut storage = Vec::new();
         let length = rows.saturating_mul(dimension);
@@ -85,8 +97,10 @@ impl<'a, T: Scalar> BlockLanczos<'a, T> {
             projected: Array2::zeros((0, 0)),
             coupling: Array2::zeros((0, 0)),
             ritz: Ritz::empty(),
+            fresh: false,
             scale: 0.0,
             products: 0,
+            accuracy,
             generator: ChaCha8Rng::seed_from_u64(seed),
         })
     }
@@ -150,6 +164,7 @@ impl<'a, T: Scalar> BlockLanczos<'a, T> {
         let purge = Purge {
             first_expected: 0,
             noise: 1e-10,
+            overlap: 0.0,
         };
         let split = orthonormalize(basis, block, &purge, &mut generator)?;
         self.locked = locked;
@@ -162,7 +177,8 @@ impl<'a, T: Scalar> BlockLanczos<'a, T> {
         Ok(())
     }
 
-    /// Applies the operator to the active block and brings the Ritz pairs up to date.
+    /// Applies the operator to the active block and, unless they lag little behind, brings the
+    /// Ritz pairs up to date.
     ///
     /// # Errors
     /// What the operator returns; the Ritz pairs are then still those of before.
@@ -175,6 +191,7 @@ impl<'a, T: Scalar> BlockLanczos<'a, T> {
         let purge = Purge {
             first_expected: if locked > 0 { 0 } else { self.first_coupled },
             noise: 16.0 * f64::EPSILON * self.scale,
+            overlap: 0.05 * self.accuracy / self.scale.max(self.accuracy),
         };
         let mut generator = self.generator.clone();
         let (basis, image) = self.split(rows, active);
@@ -182,7 +199,27 @@ impl<'a, T: Scalar> BlockLanczos<'a, T> {
         self.generator = generator;
         self.project(&split.inside.slice(s![locked.., ..]).to_owned());
         self.coupling = split.outside;
-        self.update_ritz()
+        self.fresh = false;
+        // in a large basis the projected problem costs as much as a product
+        let due = self.size >= self.ritz.values.len() + self.size / RITZ_INTERVAL;
+        if due || self.coupling.nrows() == 0 || self.exhausted() {
+            self.refresh()?;
+        }
+        Ok(())
+    }
+
+    /// Whether the Ritz pairs are those of the whole basis.
+    pub fn fresh(&self) -> bool {
+        self.fresh
+    }
+
+    /// Brings the Ritz pairs up to date.
+    pub fn refresh(&mut self) -> Result<()> {
+        if !self.fresh && self.projected.nrows() == self.size {
+            self.update_ritz()?;
+            self.fresh = true;
+        }
+        Ok(())
     }
 
     /// Enters the coefficients of the active block into the projected matrix.

@@ -36,9 +36,10 @@ pub struct LevelRequest<'a, T> {
     /// first block is always multiplied).
     pub max_products: usize,
     /// Bytes for the basis; 0 stands for what the iteration likes (about 24 vectors for a few
-    /// levels, 2r + 6 for many).
+    /// levels, more where they are short, 2r + 6 for many levels).
     pub memory_limit: usize,
-    /// Dimension up to which a dense matrix is diagonalised.
+    /// Dimension up to which a dense matrix is diagonalised; up to four times that, if the
+    /// iteration does not converge in twice as many products as a dense matrix takes.
     pub dense_limit: usize,
 }
 
@@ -52,7 +53,7 @@ impl<T> LevelRequest<'_, T> {
             seed: 0,
             max_products: usize::MAX,
             memory_limit: 0,
-            dense_limit: 400,
+            dense_limit: 600,
         }
     }
 }
@@ -131,10 +132,27 @@ pub fn lowest_levels<T: Scalar>(
 ) -> Result<Levels<T>> {
     validate(operator.dimension(), request)?;
     if dense::suits(operator.dimension(), request) {
-        dense::lowest_levels(operator, request, monitor)
-    } else {
-        search::lowest_levels(operator, request, monitor)
+        return dense::lowest_levels(operator, request, monitor);
     }
+    if !dense::can_replace(operator.dimension(), request) {
+        return search::lowest_levels(operator, request, monitor);
+    }
+    let patience = LevelRequest {
+        max_products: 2 * operator.dimension(),
+        ..request.clone()
+    };
+    let mut iterated = search::lowest_levels(operator, &patience, monitor)?;
+    let certain = iterated.level_count != LevelCount::Unchecked;
+    if iterated.status == Status::Interrupted || iterated.status == Status::Converged && certain {
+        return Ok(iterated);
+    }
+    let mut levels = dense::lowest_levels(operator, request, monitor)?;
+    if levels.status == Status::Interrupted {
+        iterated.status = Status::Interrupted;
+        return Ok(iterated);
+    }
+    levels.products += iterated.products;
+    Ok(levels)
 }
 
 fn validate<T: Scalar>(dimension: usize, request: &LevelRequest<'_, T>) -> Result<()> {

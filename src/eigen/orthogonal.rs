@@ -18,17 +18,19 @@ use rand::Rng;
 const CHUNK: usize = 4096;
 /// Smallest Gram eigenvalue, relative to the block before, that Pythagoras' theorem predicts well.
 const PREDICTABLE: f64 = 1e-3;
-/// Largest overlap with the basis, and deviation of a Gram matrix from one, that passes.
+/// Largest overlap with the basis, and deviation of a Gram matrix from one, that ever passes.
 pub(super) const ORTHOGONALITY: f64 = 1e-12;
+/// The same that two sweeps always reach.
+const BEST_ORTHOGONALITY: f64 = 1e-14;
 /// Ratio of Gram eigenvalues beyond which overlaps are measured anew, not predicted.
 const WELL_CONDITIONED: f64 = 1e-6;
 /// Sweeps after which a block is taken as it is.
 const MOST_SWEEPS: usize = 8;
 
 /// What one sweep measures on the block it leaves behind.
-struct Measured<T> {
-    overlaps: Array2<T>,
-    gram: Array2<T>,
+pub(super) struct Measured<T> {
+    pub overlaps: Array2<T>,
+    pub gram: Array2<T>,
 }
 
 /// W = C^T V + B^T Q: a block split into its part inside the basis and new orthonormal rows Q.
@@ -150,15 +152,22 @@ fn sweep<T: Scalar>(
     total(partial, rows, width)
 }
 
-/// Subtracts from the block its part inside the basis, once; its overlaps with the basis before
-/// and its Gram matrix after.
+/// Subtracts from the block its part inside the basis, once; the coefficients subtracted, and
+/// what is measured on the block afterwards.
+///
+/// `leak` holds the overlaps of the first rows of the basis with its last ones. Without regard
+/// to it, subtracting those last rows would bring back what they contain of the first ones: in a
+/// three-term recurrence that grows step by step.
 pub(super) fn subtract_basis<T: Scalar>(
     basis: ArrayView2<'_, T>,
     block: ArrayViewMut2<'_, T>,
-) -> (Array2<T>, Array2<T>) {
-    let inside = overlaps(basis, block.view());
-    let measured = sweep(basis, block, None, Some(&inside), false);
-    (inside, measured.gram)
+    leak: ArrayView2<'_, T>,
+) -> (Array2<T>, Measured<T>) {
+    let mut inside = overlaps(basis, block.view());
+    let (mut first, last) = inside.view_mut().split_at(Axis(0), leak.nrows());
+    first -= &leak.dot(&last);
+    let after = sweep(basis, block, None, Some(&inside), true);
+    (inside, after)
 }
 
 /// The first rows of the basis <- Y^T V, in place: column k of Y holds the coefficients of row k.
@@ -276,6 +285,8 @@ pub(super) struct Purge {
     pub first_expected: usize,
     /// Norm up to which a row outside the basis counts as rounding noise.
     pub noise: f64,
+    /// Largest overlap that may remain, within what is possible and usual.
+    pub overlap: f64,
 }
 
 /// Splits the block into its part inside the basis and orthonormal rows, which replace it.
@@ -294,6 +305,7 @@ pub(super) fn orthonormalize<T: Scalar, R: Rng>(
     generator: &mut R,
 ) -> Result<Split<T>> {
     let room = basis.ncols() - basis.nrows();
+    let passes = purge.overlap.clamp(BEST_ORTHOGONALITY, ORTHOGONALITY);
     let expected = measure(basis.slice(s![purge.first_expected.., ..]), block.view());
     let mut inside = Array2::zeros((basis.nrows(), block.nrows()));
     let mut rows = inside.slice_mut(s![purge.first_expected.., ..]);
@@ -325,7 +337,7 @@ pub(super) fn orthonormalize<T: Scalar, R: Rng>(
         let whitening = Whitening::new(&measured.gram, room)?;
         let remaining = measured.overlaps.dot(&whitening.transform.t());
         let width = whitening.transform.nrows();
-        let aligned = largest(&remaining) <= ORTHOGONALITY;
+        let aligned = largest(&remaining) <= passes;
         let complete = width == outside.nrows();
         if complete && aligned && deviation_from_one(&measured.gram) <= ORTHOGONALITY {
             break;
@@ -369,6 +381,7 @@ mod tests {
         let purge = Purge {
             first_expected: 0,
             noise: 1e-15,
+            overlap: ORTHOGONALITY,
         };
         let mut rows = block.clone();
         let split = orthonormalize(basis.view(), rows.view_mut(), &purge, &mut generator).unwrap();
@@ -387,6 +400,7 @@ mod tests {
         let purge = Purge {
             first_expected: 0,
             noise: 0.0,
+            overlap: ORTHOGONALITY,
         };
         orthonormalize(none.view(), basis.view_mut(), &purge, &mut generator).unwrap();
         let block = random::<T>(4, n, &mut generator);

@@ -9,7 +9,7 @@
 //! violates it with a probability known exactly; the a-priori estimate of Kuczynski and
 //! Wozniakowski, SIAM J. Matrix Anal. Appl. 13, 1094 (1992) (recalled) rests on the same idea
 //! with Chebyshev polynomials in place of the p_j. Loss of orthogonality only adds copies of
-//! Ritz values (Paige), none below the spectrum.
+//! Ritz values (Paige), none below the spectrum, as long as the known vectors are kept out.
 
 use super::lanczos::BlockLanczos;
 use super::orthogonal::{Purge, fill_random, orthonormalize, subtract_basis};
@@ -17,7 +17,7 @@ use crate::error::{Error, Result};
 use crate::linear_operator::LinearOperator;
 use crate::progress::{Monitor, Progress};
 use crate::scalar::Scalar;
-use ndarray::{Axis, s};
+use ndarray::{Array2, Axis, s};
 use rand_chacha::ChaCha8Rng;
 
 /// Probability of overlooking a level that ends the search.
@@ -107,6 +107,8 @@ impl Probe {
         // rows after the known ones: two Lanczos vectors, taking turns, and the image
         let current_row = |turn: usize| self.known + turn % 2;
         self.begin(run, &mut generator)?;
+        // what the Lanczos vectors contain of the known ones, by rounding
+        let mut leak = Array2::<T>::zeros((self.known, 2));
         let mut before = 0.0;
         let mut failure_probability = 1.0;
         for turn in 0..self.budget.min(room) {
@@ -116,10 +118,10 @@ impl Probe {
                 Err(Error::Interrupted) => return Ok(Finding::Interrupted),
                 other => other?,
             }
-            let (overlaps, gram) = subtract_basis(basis, image.view_mut());
+            let (inside, left) = subtract_basis(basis, image.view_mut(), leak.view());
             run.products += 1;
-            let diagonal = overlaps[[current, 0]].re();
-            let after = gram[[0, 0]].re().max(0.0).sqrt();
+            let diagonal = inside[[current, 0]].re();
+            let after = left.gram[[0, 0]].re().max(0.0).sqrt();
             for polynomial in &mut polynomials {
                 if !polynomial.advance(before, diagonal, after) {
                     let bound = polynomial.energy;
@@ -141,6 +143,9 @@ impl Probe {
                 break;
             }
             self.take_turn(run, current_row(turn + 1), after);
+            let leaked = left.overlaps.slice(s![..self.known, 0]);
+            let leaked = leaked.mapv(|x| x * (1.0 / after));
+            leak.column_mut((turn + 1) % 2).assign(&leaked);
             before = after;
         }
         Ok(Finding::Nothing {
@@ -159,6 +164,7 @@ impl Probe {
         let purge = Purge {
             first_expected: 0,
             noise: 0.0,
+            overlap: 0.0,
         };
         orthonormalize(known, rows.slice_mut(s![..1, ..]), &purge, generator)?;
         Ok(())

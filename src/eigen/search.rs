@@ -13,6 +13,12 @@ use rand_chacha::ChaCha8Rng;
 
 /// Krylov rows for a few levels.
 const USUAL_ROWS: usize = 24;
+/// Restarts in a round after which slow convergence doubles them: longer bases need fewer
+/// products, but each costs more to keep orthogonal.
+const PATIENCE: usize = 12;
+/// Krylov rows and bytes beyond which they are not doubled.
+const MOST_USUAL_ROWS: usize = 96;
+const MOST_USUAL_BYTES: usize = 64 << 20;
 /// Rows in a block. Single vectors need by far the fewest products (on the half-filled ring of
 /// 12 sites 136, against 291 in pairs and 809 in fours); partners in multiplets that they do
 /// not see are found by the rounds that follow the level count.
@@ -73,6 +79,10 @@ pub(super) struct Search<'a, 'b, T: Scalar> {
     pub run: BlockLanczos<'a, T>,
     /// Rows that fit in memory.
     most_rows: usize,
+    /// Krylov rows for a few levels.
+    usual_rows: usize,
+    /// Restarts since they were last changed, in this round.
+    restarts: usize,
     /// Rows in a block.
     width: usize,
     /// The locked levels.
@@ -99,7 +109,7 @@ impl<'a, 'b, T: Scalar> Search<'a, 'b, T> {
             });
         }
         let spare = most_rows - (r + 2) - 2 * width;
-        let rows = (krylov_rows(r, width) + width)
+        let rows = (krylov_rows(USUAL_ROWS, r, width) + width)
             .min(most_rows)
             .min(n + width);
         Ok(Search {
@@ -110,8 +120,10 @@ impl<'a, 'b, T: Scalar> Search<'a, 'b, T> {
                 most_extra: spare.min(r.max(16)),
                 tolerance: request.tolerance,
             },
-            run: BlockLanczos::new(operator, rows, request.seed)?,
+            run: BlockLanczos::new(operator, rows, request.tolerance, request.seed)?,
             most_rows,
+            usual_rows: USUAL_ROWS,
+            restarts: 0,
             width,
             locked: Vec::new(),
             required: None,
@@ -144,21 +156,26 @@ impl<'a, 'b, T: Scalar> Search<'a, 'b, T> {
         &mut self,
         monitor: &mut Monitor<'_>,
     ) -> Result<std::result::Result<Assessment, Status>> {
+        let mut wanted = self.goal.levels;
         loop {
             match self.run.step() {
                 Err(Error::Interrupted) => return Ok(Err(Status::Interrupted)),
                 other => other?,
             }
+            if self.full(wanted) {
+                self.run.refresh()?;
+            }
             let levels = self.levels();
-            let exhausted = self.run.exhausted();
-            let scale = self.run.scale;
-            let assessment = self.goal.assess(&levels, scale, exhausted, self.required);
             if self.report(&levels, monitor).is_break() {
                 return Ok(Err(Status::Interrupted));
             }
-            let Assessment::Unfinished { wanted } = assessment else {
-                return Ok(Ok(assessment));
-            };
+            if self.run.fresh() {
+                let (scale, exhausted) = (self.run.scale, self.run.exhausted());
+                match self.goal.assess(&levels, scale, exhausted, self.required) {
+                    Assessment::Unfinished { wanted: more } => wanted = more,
+                    finished => return Ok(Ok(finished)),
+                }
+            }
             let width = self.run.residual_width();
             if width == 0 || self.run.products + width > self.request.max_products {
                 return Ok(Err(Status::NotConverged));
@@ -189,19 +206,38 @@ impl<'a, 'b, T: Scalar> Search<'a, 'b, T> {
         })
     }
 
-    /// Extends the basis, or restarts it when it is full.
-    fn advance(&mut self, wanted: usize) {
+    /// Levels still wanted from the basis, and the rows it may have for them.
+    fn room(&self, wanted: usize) -> (usize, usize) {
         let (locked, width) = (self.locked.len(), self.run.residual_width());
         let wanted = wanted.saturating_sub(locked).max(1);
         let limit = self.most_rows - locked - width;
-        let full = krylov_rows(wanted, width).min(limit);
-        if self.run.size + width <= full {
+        let rows = krylov_rows(self.usual_rows, wanted, width).min(limit);
+        (wanted, rows)
+    }
+
+    /// Whether the basis has no room for the residual block.
+    fn full(&self, wanted: usize) -> bool {
+        self.run.size + self.run.residual_width() > self.room(wanted).1
+    }
+
+    /// Extends the basis, or restarts it when it is full.
+    fn advance(&mut self, wanted: usize) {
+        if !self.full(wanted) {
             self.run.extend();
             return;
         }
-        let spare = full.saturating_sub(wanted + 1 + 2 * width);
+        self.restarts += 1;
+        let bytes = 2 * self.usual_rows * self.operator.dimension() * size_of::<T>();
+        let may_double = 2 * self.usual_rows <= MOST_USUAL_ROWS && bytes <= MOST_USUAL_BYTES;
+        if self.restarts >= PATIENCE && may_double {
+            self.usual_rows *= 2;
+            self.restarts = 0;
+        }
+        let width = self.run.residual_width();
+        let (wanted, rows) = self.room(wanted);
+        let spare = rows.saturating_sub(wanted + 1 + 2 * width);
         let keep = (wanted + 1 + spare / 3)
-            .min(full.saturating_sub(width))
+            .min(rows.saturating_sub(width))
             .min(self.run.size);
         self.run.restart(keep);
     }
@@ -310,6 +346,7 @@ impl<'a, 'b, T: Scalar> Search<'a, 'b, T> {
             level.origin = row;
         }
         self.required = Some(required);
+        self.restarts = 0;
         let width = BLOCK.min(self.operator.dimension() - found.found);
         let generator = self.generator(round);
         self.run.begin(found.found, width, None, generator)
@@ -317,19 +354,21 @@ impl<'a, 'b, T: Scalar> Search<'a, 'b, T> {
 }
 
 /// Rows of a full basis that looks for `wanted` levels and one more.
-fn krylov_rows(wanted: usize, width: usize) -> usize {
-    USUAL_ROWS.max(2 * (wanted + 1) + 3 * width)
+fn krylov_rows(usual: usize, wanted: usize, width: usize) -> usize {
+    usual.max(2 * (wanted + 1) + 3 * width)
 }
 
 /// How many levels to take out of the search for missed ones: beyond `found` and the next,
-/// those whose joint residual is small against their distance from the last multiplet.
+/// those whose joint residual is small against their distance from the last multiplet, and
+/// against that of the next level: partners of the next level must not count as missed.
 fn nearly_converged(levels: &[Level], found: usize) -> usize {
     let top = levels[found - 1].energy;
+    let most = 0.2 * (levels[found].energy - top);
     let mut square: f64 = levels[..=found].iter().map(|l| l.residual.powi(2)).sum();
     let mut kept = found + 1;
     for level in &levels[kept..] {
         square += level.residual.powi(2);
-        if square.sqrt() > 0.05 * (level.energy - top) {
+        if square.sqrt() > most.min(0.05 * (level.energy - top)) {
             break;
         }
         kept += 1;
