@@ -120,10 +120,26 @@ fn of_strings<T: Scalar>(space: &ModeSpace, rows: ArrayView2<'_, T>) -> Result<A
 }
 
 fn overlap<T: Scalar>(bra: ArrayView1<'_, T>, ket: ArrayView1<'_, T>) -> T {
-    pulp::Arch::new().dispatch(|| match (bra.as_slice(), ket.as_slice()) {
-        (Some(bra), Some(ket)) => dot(bra, ket),
+    match (bra.as_slice(), ket.as_slice()) {
+        (Some(bra), Some(ket)) => pulp::Arch::new().dispatch(Overlap { bra, ket }),
         _ => bra.iter().zip(ket).map(|(&x, &y)| x.conj() * y).sum(),
-    })
+    }
+}
+
+/// <bra|ket>. (A struct, not a closure: only then it is compiled for the instruction set found at
+/// run time.)
+struct Overlap<'a, T> {
+    bra: &'a [T],
+    ket: &'a [T],
+}
+
+impl<T: Scalar> pulp::NullaryFnOnce for Overlap<'_, T> {
+    type Output = T;
+
+    #[inline(always)]
+    fn call(self) -> T {
+        dot(self.bra, self.ket)
+    }
 }
 
 /// <bra|ket> in several running sums, so that it vectorises.

@@ -16,7 +16,8 @@ use crate::dense::{Conjugate, Threads, multiply};
 use crate::error::Result;
 use crate::memory;
 use crate::scalar::Scalar;
-use ndarray::{Array1, Array2, ArrayView2, ArrayView3, ArrayViewMut2, Axis};
+use ndarray::{Array1, Array2, ArrayView2, ArrayView3, ArrayViewMut2, Axis, s};
+use pulp::NullaryFnOnce;
 use rayon::prelude::*;
 use std::ops::Range;
 
@@ -227,7 +228,6 @@ impl<T: Scalar> SpinHalfOperator<T> {
     /// The sparse down part and the density coupling, a tile of rows at a time, transposed.
     fn apply_down<const W: usize>(&self, vector: &[T], result: &mut [T]) {
         let width = self.down.sparse.rows();
-        let matrix = self.down.dense.is_none().then_some(&self.down.sparse);
         let arch = pulp::Arch::new();
         result
             .par_chunks_mut(W * width)
@@ -236,18 +236,16 @@ impl<T: Scalar> SpinHalfOperator<T> {
             .for_each_init(
                 || (vec![[T::zero(); W]; width], vec![[T::zero(); W]; width]),
                 |(source, target), (tile, (result, vector))| {
-                    let mut rows: Vec<&mut [T]> = result.chunks_mut(width).collect();
                     let lanes = vector.chunks(width).enumerate();
                     let lanes: Vec<Lane<'_, T>> = lanes.map(|(k, row)| (k, 1.0, row)).collect();
                     let coupling = self.density.as_ref();
-                    let potentials = coupling.map(|c| (c, c.potentials::<W>(tile * W, rows.len())));
-                    arch.dispatch(|| {
-                        transpose_in(&lanes, source);
-                        multiply_tile(matrix, source, target, |i, x| match &potentials {
-                            Some((coupling, potentials)) => coupling.act(potentials, i, x),
-                            None => [T::zero(); W],
-                        });
-                        transpose_out(target, &mut rows);
+                    arch.dispatch(DownTile::<T, W> {
+                        matrix: self.down.dense.is_none().then_some(&self.down.sparse),
+                        coupling: coupling.map(|c| (c, c.potentials(tile * W, lanes.len()))),
+                        lanes,
+                        rows: result.chunks_mut(width).collect(),
+                        source,
+                        target,
                     });
                 },
             );
@@ -269,21 +267,14 @@ impl<T: Scalar> SpinHalfOperator<T> {
             .enumerate()
             .for_each_init(
                 || (vec![[T::zero(); W]; height], vec![[T::zero(); W]; height]),
-                |(source, target), (tile, mut result)| {
+                |(source, target), (tile, result)| {
                     let columns = tile * W..tile * W + result.ncols();
-                    arch.dispatch(|| {
-                        for (row, packed) in vector.rows().into_iter().zip(&mut *source) {
-                            if let Some(row) = row.to_slice() {
-                                packed[..columns.len()].copy_from_slice(&row[columns.clone()]);
-                            }
-                        }
-                        let none = |_: usize, _: &[T; W]| [T::zero(); W];
-                        multiply_tile(Some(&self.up.sparse), source, target, none);
-                        for (mut row, sums) in result.rows_mut().into_iter().zip(&*target) {
-                            for (total, &sum) in row.iter_mut().zip(sums) {
-                                *total += sum;
-                            }
-                        }
+                    arch.dispatch(UpTile::<T, W> {
+                        matrix: &self.up.sparse,
+                        vector: vector.slice(s![.., columns]),
+                        result,
+                        source,
+                        target,
                     });
                 },
             );
@@ -334,6 +325,96 @@ impl<T: Scalar> SpinHalfOperator<T> {
             .map(element)
             .collect::<Vec<_>>()
             .into()
+    }
+}
+
+/// A tile of rows: down part and density coupling. (A struct, not a closure: only then the work
+/// is compiled for the instruction set found at run time.)
+struct DownTile<'a, T, const W: usize> {
+    matrix: Option<&'a SparseMatrix<T>>,
+    coupling: Option<(&'a DensityCoupling, Vec<[f64; W]>)>,
+    lanes: Vec<Lane<'a, T>>,
+    rows: Vec<&'a mut [T]>,
+    source: &'a mut [[T; W]],
+    target: &'a mut [[T; W]],
+}
+
+impl<T: Scalar, const W: usize> NullaryFnOnce for DownTile<'_, T, W> {
+    type Output = ();
+
+    #[inline(always)]
+    fn call(mut self) {
+        transpose_in(&self.lanes, self.source);
+        let coupling = &self.coupling;
+        multiply_tile(
+            self.matrix,
+            self.source,
+            self.target,
+            #[inline(always)]
+            |i, x| match coupling {
+                Some((coupling, potentials)) => coupling.act(potentials, i, x),
+                None => [T::zero(); W],
+            },
+        );
+        transpose_out(self.target, &mut self.rows);
+    }
+}
+
+/// A tile of columns: up part.
+struct UpTile<'a, T, const W: usize> {
+    matrix: &'a SparseMatrix<T>,
+    vector: ArrayView2<'a, T>,
+    result: ArrayViewMut2<'a, T>,
+    source: &'a mut [[T; W]],
+    target: &'a mut [[T; W]],
+}
+
+impl<T: Scalar, const W: usize> NullaryFnOnce for UpTile<'_, T, W> {
+    type Output = ();
+
+    #[inline(always)]
+    fn call(mut self) {
+        for (row, packed) in self.vector.rows().into_iter().zip(self.source.iter_mut()) {
+            if let Some(row) = row.to_slice() {
+                pack_lane(row, packed);
+            }
+        }
+        multiply_tile(
+            Some(self.matrix),
+            self.source,
+            self.target,
+            #[inline(always)]
+            |_, _| [T::zero(); W],
+        );
+        for (mut row, sums) in self.result.rows_mut().into_iter().zip(&*self.target) {
+            if let Some(row) = row.as_slice_mut() {
+                add_lane(row, sums);
+            }
+        }
+    }
+}
+
+/// packed = row, as far as the row reaches
+#[inline(always)]
+fn pack_lane<T: Scalar, const W: usize>(row: &[T], packed: &mut [T; W]) {
+    if let Ok(row) = <&[T; W]>::try_from(row) {
+        *packed = *row;
+    } else {
+        packed[..row.len()].copy_from_slice(row);
+    }
+}
+
+/// row += sums, as far as the row reaches
+#[inline(always)]
+fn add_lane<T: Scalar, const W: usize>(row: &mut [T], sums: &[T; W]) {
+    if let Ok(row) = <&mut [T; W]>::try_from(&mut *row) {
+        for k in 0..W {
+            row[k] += sums[k];
+        }
+    } else {
+        for (total, &sum) in row.iter_mut().zip(sums) {
+            *total += sum;
+        }
     }
 }
 

@@ -18,6 +18,7 @@ use super::walker::ModeSpace;
 use crate::error::Result;
 use crate::scalar::Scalar;
 use ndarray::{Array1, Array2, ArrayView2, ArrayViewMut2};
+use pulp::NullaryFnOnce;
 use rayon::prelude::*;
 
 /// H of one kind of particles, split into low and high modes.
@@ -173,33 +174,15 @@ impl<T: Scalar> SplitOperator<T> {
         source: &mut [[T; W]],
         target: &mut [[T; W]],
     ) {
-        let Task { class, first, rows } = task;
-        let range = first..first + rows.len();
-        let potentials = self.potentials::<W>(&class.high_occupations[range.clone()]);
-        let target = &mut target[..class.width];
-        pulp::Arch::new().dispatch(|| {
-            let lanes = class.lanes(range.clone().map(|row| Some((row as u32, 1.0))), vector);
-            let own = &mut source[..class.width];
-            transpose_in(&lanes, own);
-            multiply_tile(Some(&class.low), own, target, |a, x| {
-                coupled(&potentials, &class.low_occupations[a], x)
-            });
-            for crossing in &class.crossings {
-                let other = &self.classes[crossing.from];
-                let lanes = other.lanes(crossing.high[range.clone()].iter().copied(), vector);
-                if !lanes.is_empty() {
-                    let source = &mut source[..other.width];
-                    if lanes.len() < W {
-                        source.fill([T::zero(); W]);
-                    }
-                    transpose_in(&lanes, source);
-                    add_tile_product(&crossing.low, source, target);
-                }
-            }
-            transpose_out(target, rows);
-            for (row, target) in range.clone().zip(rows) {
-                class.add_high::<W>(row, vector, target);
-            }
+        let range = task.first..task.first + task.rows.len();
+        let potentials = self.potentials::<W>(&task.class.high_occupations[range]);
+        pulp::Arch::new().dispatch(SplitTile {
+            operator: self,
+            task,
+            vector,
+            potentials,
+            source,
+            target,
         });
     }
 
@@ -220,6 +203,56 @@ struct Task<'a, 'b, T> {
     class: &'a Class<T>,
     first: usize,
     rows: &'a mut [&'b mut [T]],
+}
+
+/// The work of a task. (A struct, not a closure: only then it is compiled for the instruction set
+/// found at run time.)
+struct SplitTile<'a, 'b, T, const W: usize> {
+    operator: &'a SplitOperator<T>,
+    task: Task<'a, 'b, T>,
+    vector: &'a [T],
+    potentials: Vec<[f64; W]>,
+    source: &'a mut [[T; W]],
+    target: &'a mut [[T; W]],
+}
+
+impl<T: Scalar, const W: usize> NullaryFnOnce for SplitTile<'_, '_, T, W> {
+    type Output = ();
+
+    #[inline(always)]
+    fn call(self) {
+        let (classes, vector) = (&self.operator.classes, self.vector);
+        let (class, first, rows) = (self.task.class, self.task.first, self.task.rows);
+        let range = first..first + rows.len();
+        let target = &mut self.target[..class.width];
+        let lanes = class.lanes(range.clone().map(|row| Some((row as u32, 1.0))), vector);
+        let own = &mut self.source[..class.width];
+        transpose_in(&lanes, own);
+        let potentials = &self.potentials;
+        multiply_tile(
+            Some(&class.low),
+            own,
+            target,
+            #[inline(always)]
+            |a, x| coupled(potentials, &class.low_occupations[a], x),
+        );
+        for crossing in &class.crossings {
+            let other = &classes[crossing.from];
+            let lanes = other.lanes(crossing.high[range.clone()].iter().copied(), vector);
+            if !lanes.is_empty() {
+                let source = &mut self.source[..other.width];
+                if lanes.len() < W {
+                    source.fill([T::zero(); W]);
+                }
+                transpose_in(&lanes, source);
+                add_tile_product(&crossing.low, source, target);
+            }
+        }
+        transpose_out(target, rows);
+        for (row, target) in range.zip(rows) {
+            class.add_high::<W>(row, vector, target);
+        }
+    }
 }
 
 fn tile_of(rows: usize) -> usize {
