@@ -93,8 +93,11 @@ fn solve<T: Scalar + Element>(
     start: Option<ArrayView2<'_, T>>,
     settings: Settings,
 ) -> PyResult<Levels> {
+    // the basis may take most of what is left, the rest is for products and results
+    let available = usize::try_from(memory::available_bytes()).unwrap_or(usize::MAX);
     let request = LevelRequest {
         levels: settings.levels,
+        memory_limit: available / 5 * 4,
         tolerance: settings.tolerance,
         start,
         seed: settings.seed,
