@@ -46,6 +46,7 @@ pub(super) fn lowest_levels<T: Scalar>(
         levels: request.levels,
         most_extra: n,
         tolerance: request.tolerance,
+        granted: 0.0,
     };
     // an upper bound of the norm
     let scale = images

@@ -25,7 +25,8 @@ pub struct LevelRequest<'a, T> {
     /// Number of levels wanted, r >= 1.
     pub levels: usize,
     /// A level counts as converged when its residual norm |H x - E x| is at most this times
-    /// max(1, largest |E| of the levels found), or at rounding level of the operator's norm.
+    /// max(1, largest |E| of the levels found, or first taken for them), or at rounding level of
+    /// the operator's norm.
     /// Levels closer than twice that are one multiplet.
     pub tolerance: f64,
     /// Rows to start from, `(k, dimension)`; random rows are always added.

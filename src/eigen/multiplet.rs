@@ -40,6 +40,9 @@ pub(super) struct Goal {
     /// Levels that may be added to complete a multiplet.
     pub most_extra: usize,
     pub tolerance: f64,
+    /// Residual norm that levels locked in earlier rounds were allowed. It stays in force: the
+    /// highest level may sink when missed ones are found, and locked levels cannot follow.
+    pub granted: f64,
 }
 
 /// Residual norms around this many units of rounding of the operator cannot be bettered.
@@ -50,7 +53,9 @@ impl Goal {
     pub fn residual_tolerance(&self, levels: &[Level], scale: f64) -> f64 {
         let wanted = levels.iter().take(self.levels);
         let size = wanted.fold(1.0, |top: f64, level| top.max(level.energy.abs()));
-        (self.tolerance * size).max(ROUNDING * scale)
+        (self.tolerance * size)
+            .max(ROUNDING * scale)
+            .max(self.granted)
     }
 
     /// Judges levels in increasing order; `exhausted` says that there are no others.
@@ -216,6 +221,7 @@ mod tests {
         levels: 2,
         most_extra: 2,
         tolerance: 1e-10,
+        granted: 0.0,
     };
 
     #[test]

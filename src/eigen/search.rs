@@ -119,6 +119,7 @@ impl<'a, 'b, T: Scalar> Search<'a, 'b, T> {
                 levels: r,
                 most_extra: spare.min(r.max(16)),
                 tolerance: request.tolerance,
+                granted: 0.0,
             },
             run: BlockLanczos::new(operator, rows, request.tolerance, request.seed)?,
             most_rows,
@@ -341,6 +342,8 @@ impl<'a, 'b, T: Scalar> Search<'a, 'b, T> {
 
     /// Locks what has converged and begins in its complement, where a level was missed.
     fn resume(&mut self, found: &Found, required: Required, round: usize) -> Result<()> {
+        let scale = self.run.scale;
+        self.goal.granted = self.goal.residual_tolerance(&found.levels, scale);
         self.locked = found.levels[..found.found].to_vec();
         for (row, level) in self.locked.iter_mut().enumerate() {
             level.origin = row;

@@ -542,6 +542,48 @@ fn a_spectrum_much_wider_than_the_lowest_levels_leaves_the_tolerance_in_reach() 
 }
 
 #[test]
+fn partners_found_late_do_not_stall_the_search() {
+    // triplets, seen one member at a time: each one found lowers the highest level wanted, and
+    // with it the tolerance
+    let levels: Vec<f64> = (0..600)
+        .map(|k| 2.0 + 100.0 * ((k / 3) as f64 / 200.0).sqrt())
+        .collect();
+    for wanted in 1..9 {
+        for seed in 0..4 {
+            let request = LevelRequest {
+                seed,
+                max_products: 2000,
+                ..iterative(wanted)
+            };
+            let operator = Reflected::new(&levels);
+            let result = solve(&operator, &request);
+            check(&operator, &result, &levels);
+            assert_eq!(result.energies.len(), wanted.next_multiple_of(3));
+            assert_ne!(result.level_count, LevelCount::Unchecked);
+        }
+    }
+}
+
+#[test]
+fn a_dense_matrix_takes_over_where_the_iteration_is_slow() {
+    // gaps of 1e-9 of the spectrum
+    let levels: Vec<f64> = (0..700).map(|k| 1e-8 * (k as f64).powi(4)).collect();
+    let operator = Reflected::new(&levels);
+    let request = LevelRequest {
+        dense_limit: 300,
+        tolerance: 1e-13,
+        ..LevelRequest::new(5)
+    };
+    let result = solve(&operator, &request);
+    check(&operator, &result, &levels);
+    assert_eq!(
+        (result.method, result.level_count),
+        ("dense", LevelCount::Proved)
+    );
+    assert!(result.products > 700);
+}
+
+#[test]
 fn random_spectra_with_multiplicities_in_little_memory() {
     use rand::Rng;
     let mut generator = ChaCha8Rng::seed_from_u64(77);
