@@ -62,8 +62,8 @@ def solve(
     levels : int
         Number of levels, instead of weights.
     tol : float
-        A level counts as converged when its residual norm is at most `tol` times
-        max(1, largest \|E\|).
+        A level counts as converged when its residual norm is at most `tol` times the largest
+        \|E\| wanted (at least 1 % of the norm of H); below 1.
     start : array_like or Ensemble, optional
         Vectors to start from as columns, (dimension,) or (dimension, k), or an earlier result
         of the same sector. A wrong start costs time, never correctness: random vectors are
@@ -118,6 +118,8 @@ def solve(
         expected = f"at most {hamiltonian.dimension}, the dimension of the sector"
         raise ArgumentError(name, f"{count} levels", expected)
     tolerance = arguments.positive("tol", tol)
+    if tolerance >= 1.0:
+        raise ArgumentError("tol", tolerance, "a number below 1")
     limit = (
         5000 + 500 * count
         if max_products is None

@@ -24,10 +24,10 @@ use std::ops::Range;
 pub struct LevelRequest<'a, T> {
     /// Number of levels wanted, r >= 1.
     pub levels: usize,
-    /// A level counts as converged when its residual norm |H x - E x| is at most this times
-    /// max(1, largest |E| of the levels found, or first taken for them), or at rounding level of
-    /// the operator's norm.
-    /// Levels closer than twice that are one multiplet.
+    /// A level counts as converged when its residual norm |H x - E x| is at most this times the
+    /// largest |E| of the levels found, or first taken for them (at least 1 % of the operator's
+    /// norm), or at rounding level of that norm. Levels closer than twice that are one multiplet.
+    /// Nothing depends on the unit of energy.
     pub tolerance: f64,
     /// Rows to start from, `(k, dimension)`; random rows are always added.
     pub start: Option<ArrayView2<'a, T>>,

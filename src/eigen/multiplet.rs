@@ -45,6 +45,8 @@ pub(super) struct Goal {
     pub granted: f64,
 }
 
+/// Energies that happen to lie near zero are measured by this share of the operator's norm.
+const SHARE_OF_NORM: f64 = 0.01;
 /// Residual norms around this many units of rounding of the operator cannot be bettered.
 const ROUNDING: f64 = 32.0 * f64::EPSILON;
 
@@ -52,7 +54,8 @@ impl Goal {
     /// Residual norm up to which a level is converged.
     pub fn residual_tolerance(&self, levels: &[Level], scale: f64) -> f64 {
         let wanted = levels.iter().take(self.levels);
-        let size = wanted.fold(1.0, |top: f64, level| top.max(level.energy.abs()));
+        let least = SHARE_OF_NORM * scale;
+        let size = wanted.fold(least, |top: f64, level| top.max(level.energy.abs()));
         (self.tolerance * size)
             .max(ROUNDING * scale)
             .max(self.granted)

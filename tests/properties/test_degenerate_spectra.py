@@ -102,9 +102,9 @@ def test_free_rings(sector: Any, flux: float) -> None:
 
 
 LARGE = [
-    fh.SpinHalfFermions(9, particles=(2, 2)),
-    fh.Fermions(14, 4),
-    fh.Bosons(6, 6),
+    fh.SpinHalfFermions(9, particles=(2, 3)),
+    fh.Fermions(16, 5),
+    fh.Bosons(6, 10),
 ]
 
 
