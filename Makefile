@@ -71,6 +71,10 @@ bench: env
 	cargo bench --quiet --bench eigen
 	python benches/compare.py
 
+# the half-filled ring of 16 sites: needs about 20 GiB and much patience
+bench-large: env
+	python benches/compare.py --large
+
 # a wheel for others: OpenBLAS is bundled
 wheel: env
 	maturin build --release --out dist
