@@ -7,12 +7,13 @@ one-body density matrices, natural occupations, and the verdict of the exclusion
 from importlib import import_module
 from typing import TYPE_CHECKING, Any
 
-from fockhull import couplings, errors, lattices
+from fockhull import couplings, errors, functionals, lattices
 from fockhull._core import __version__
 from fockhull.configuration_ensemble import ConfigurationEnsemble
 from fockhull.eigenproblem import SolveProgress, solve
 from fockhull.ensemble import Ensemble, LevelCount
 from fockhull.errors import CutMultipletWarning, FockhullError
+from fockhull.functionals import ExplicitEnsemble, FunctionalValue, UniversalFunctional
 from fockhull.hamiltonian import Hamiltonian, MemoryEstimate
 from fockhull.inequality import Inequality
 from fockhull.interaction import Interaction
@@ -26,8 +27,10 @@ __all__ = [
     "CutMultipletWarning",
     "Ensemble",
     "ExclusionPolytope",
+    "ExplicitEnsemble",
     "Fermions",
     "FockhullError",
+    "FunctionalValue",
     "Hamiltonian",
     "Inequality",
     "Interaction",
@@ -40,9 +43,11 @@ __all__ = [
     "SpinHalfFermions",
     "Stretch",
     "Support",
+    "UniversalFunctional",
     "__version__",
     "couplings",
     "errors",
+    "functionals",
     "lattices",
     "solve",
     "sweep",

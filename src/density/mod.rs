@@ -1,8 +1,10 @@
 //! What is read off state vectors: one-body density matrices gamma_pq = <a+_q a_p> by partial
-//! traces, and the total spin.
+//! traces, those between two states, and the total spin.
 
 mod one_body;
 mod spin;
+mod transition;
 
 pub use one_body::{ensemble_density_matrix, state_density_matrices};
 pub use spin::spin_squared;
+pub use transition::transition_density_matrices;

@@ -48,7 +48,7 @@ pub fn state_density_matrices<T: Scalar>(
     Ok(gamma)
 }
 
-fn shape_error(length: usize, (up, down): (usize, usize)) -> Error {
+pub(super) fn shape_error(length: usize, (up, down): (usize, usize)) -> Error {
     let expected = format!("{up} x {down} components, the dimension of the sector");
     Error::argument("vectors", format!("{length} components"), expected)
 }
@@ -119,7 +119,8 @@ fn of_strings<T: Scalar>(space: &ModeSpace, rows: ArrayView2<'_, T>) -> Result<A
     Ok(completed(parts, modes))
 }
 
-fn overlap<T: Scalar>(bra: ArrayView1<'_, T>, ket: ArrayView1<'_, T>) -> T {
+/// <bra|ket>.
+pub(super) fn overlap<T: Scalar>(bra: ArrayView1<'_, T>, ket: ArrayView1<'_, T>) -> T {
     match (bra.as_slice(), ket.as_slice()) {
         (Some(bra), Some(ket)) => pulp::Arch::new().dispatch(Overlap { bra, ket }),
         _ => bra.iter().zip(ket).map(|(&x, &y)| x.conj() * y).sum(),

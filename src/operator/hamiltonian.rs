@@ -93,9 +93,10 @@ impl<T: Scalar> Hamiltonian<T> {
         }
         let modes = sector.modes();
         let mut exact = Array3::zeros((sector.spins(), modes, modes));
+        let size = symmetry::largest(&one_body);
         for (matrix, mut target) in one_body.outer_iter().zip(exact.outer_iter_mut()) {
             symmetry::check_square("one_body", matrix.shape(), modes)?;
-            target.assign(&symmetry::hermitian("one_body", matrix)?);
+            target.assign(&symmetry::hermitian_beside("one_body", matrix, size)?);
         }
         Ok(Hamiltonian {
             sector,

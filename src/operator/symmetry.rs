@@ -71,7 +71,8 @@ pub fn check_finite<T: Scalar, D: Dimension>(
     }
 }
 
-fn largest<T: Scalar, D: Dimension>(array: &ArrayView<'_, T, D>) -> f64 {
+/// Largest absolute value.
+pub fn largest<T: Scalar, D: Dimension>(array: &ArrayView<'_, T, D>) -> f64 {
     array.iter().map(|x| x.abs()).fold(0.0, f64::max)
 }
 
@@ -94,9 +95,18 @@ pub fn hermitian<T: Scalar>(
     argument: &'static str,
     matrix: ArrayView2<'_, T>,
 ) -> Result<Array2<T>> {
+    hermitian_beside(argument, matrix, largest(&matrix))
+}
+
+/// The same, for one of several matrices of which `size` is the largest element.
+pub fn hermitian_beside<T: Scalar>(
+    argument: &'static str,
+    matrix: ArrayView2<'_, T>,
+    size: f64,
+) -> Result<Array2<T>> {
     check_finite(argument, &matrix)?;
     let asymmetry = deviation(&matrix, &matrix.t(), true);
-    if asymmetry > TOLERANCE * largest(&matrix) {
+    if asymmetry > TOLERANCE * size {
         let kind = if T::IS_COMPLEX {
             "Hermitian"
         } else {

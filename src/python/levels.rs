@@ -12,7 +12,7 @@ use crate::operator as core;
 use crate::scalar::Scalar;
 use crate::weights::Weights;
 use num_complex::Complex64;
-use numpy::ndarray::{Array1, Array4, ArrayView2, Ix2};
+use numpy::ndarray::{Array1, Array4, Array5, ArrayView2, Ix2};
 use numpy::{Element, IntoPyArray, PyArray1, PyReadonlyArray1, PyReadonlyArray2};
 use pyo3::prelude::*;
 use std::sync::Arc;
@@ -214,6 +214,39 @@ pub fn density_matrices(
         Numbers::Complex(x) => {
             let x = x.as_array();
             let gamma = enter(py, || traced(sector, x))?;
+            Ok(gamma.into_pyarray(py).into_any().unbind())
+        }
+    }
+}
+
+/// Transition density matrices `(bras, kets, spins, d, d)` of the rows of two arrays of one type.
+#[pyfunction]
+pub fn transition_density_matrices(
+    py: Python<'_>,
+    sector: &Sector,
+    bras: &Bound<'_, PyAny>,
+    kets: &Bound<'_, PyAny>,
+) -> PyResult<Py<PyAny>> {
+    fn traced<T: Scalar>(
+        sector: &Sector,
+        bras: ArrayView2<'_, T>,
+        kets: ArrayView2<'_, T>,
+    ) -> Result<Array5<T>> {
+        check_length(sector, &bras)?;
+        check_length(sector, &kets)?;
+        density::transition_density_matrices(&sector.inner, bras, kets)
+    }
+    match Numbers::<Ix2>::read(bras)? {
+        Numbers::Real(x) => {
+            let y: PyReadonlyArray2<'_, f64> = kets.extract()?;
+            let (x, y) = (x.as_array(), y.as_array());
+            let gamma = enter(py, || traced(sector, x, y))?;
+            Ok(gamma.into_pyarray(py).into_any().unbind())
+        }
+        Numbers::Complex(x) => {
+            let y: PyReadonlyArray2<'_, Complex64> = kets.extract()?;
+            let (x, y) = (x.as_array(), y.as_array());
+            let gamma = enter(py, || traced(sector, x, y))?;
             Ok(gamma.into_pyarray(py).into_any().unbind())
         }
     }

@@ -22,7 +22,10 @@ mod _core {
     #[pymodule_export]
     use super::interaction::Interaction;
     #[pymodule_export]
-    use super::levels::{Levels, checked_weights, density_matrices, lowest_levels, spin_squared};
+    use super::levels::{
+        Levels, checked_weights, density_matrices, lowest_levels, spin_squared,
+        transition_density_matrices,
+    };
     #[pymodule_export]
     use super::polytope::{ExclusionPolytope, Inequality, LineUps, Projections};
     #[pymodule_export]
