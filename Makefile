@@ -25,7 +25,9 @@ $(VENV)/ready: pyproject.toml
 $(VENV)/installed: $(VENV)/ready $(SOURCES)
 	@echo "Building fockhull (the first build takes one or two minutes)"
 	@rm -rf dist/local
-	@maturin build --quiet --release --auditwheel skip --interpreter $(BIN)/python --out dist/local
+	@mkdir -p dist/local
+	@maturin build --release --auditwheel skip --interpreter $(BIN)/python --out dist/local \
+	    > dist/build.log 2>&1 || { cat dist/build.log; exit 1; }
 	@$(BIN)/python -m pip install --quiet --disable-pip-version-check \
 	    "$$(ls dist/local/*.whl)[dev]"
 	@$(BIN)/python -m pip install --quiet --disable-pip-version-check \
