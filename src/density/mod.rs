@@ -3,6 +3,7 @@
 
 mod one_body;
 mod spin;
+mod split;
 mod transition;
 
 pub use one_body::{ensemble_density_matrix, state_density_matrices};

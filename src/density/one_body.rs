@@ -1,5 +1,6 @@
 //! One-body density matrices of states given as vectors.
 
+use super::split;
 use crate::error::{Error, Result};
 use crate::operator::{HopTable, ModeSpace};
 use crate::scalar::Scalar;
@@ -40,7 +41,12 @@ pub fn state_density_matrices<T: Scalar>(
             }
             _ => {
                 if let (Some(space), Some(mut target)) = (spaces.first(), of_spins.next()) {
-                    target.assign(&of_configurations(space, vector)?);
+                    let gamma = if split::suits(space) {
+                        split::of_low_and_high(space, vector)?
+                    } else {
+                        of_configurations(space, vector)?
+                    };
+                    target.assign(&gamma);
                 }
             }
         }
@@ -164,7 +170,7 @@ fn dot<T: Scalar>(bra: &[T], ket: &[T]) -> T {
 }
 
 /// Sum in a fixed order (it must not depend on the threads) with the upper triangle filled in.
-fn completed<T: Scalar>(parts: Vec<Array2<T>>, modes: usize) -> Array2<T> {
+pub(super) fn completed<T: Scalar>(parts: Vec<Array2<T>>, modes: usize) -> Array2<T> {
     let mut gamma = Array2::zeros((modes, modes));
     for part in parts {
         gamma += &part;
@@ -194,6 +200,11 @@ mod tests {
             Sector::fermions(6, 3).unwrap(),
             Sector::fermions(3, 0).unwrap(),
             Sector::bosons(4, 3).unwrap(),
+            // large enough for low and high modes
+            Sector::fermions(13, 5).unwrap(),
+            Sector::fermions(12, 6).unwrap(),
+            Sector::bosons(6, 6).unwrap(),
+            Sector::bosons(7, 6).unwrap(),
             Sector::spin_half(5, 2, 3).unwrap(),
             Sector::spin_half(4, 0, 1).unwrap(),
         ] {

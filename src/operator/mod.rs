@@ -21,6 +21,7 @@ mod walker;
 pub use hamiltonian::{Hamiltonian, MemoryEstimate};
 pub use hops::{Hop, HopTable};
 pub use interaction::{Entry, Interaction};
+pub use spaces::HalfSpaces;
 pub use stored::SparseMatrix;
 pub use symmetry::TensorOrder;
 pub use walker::{ModeSpace, Walker};
