@@ -48,6 +48,7 @@ __all__ = [
     "couplings",
     "errors",
     "functionals",
+    "interchange",
     "lattices",
     "solve",
     "sweep",
@@ -55,11 +56,15 @@ __all__ = [
 ]
 
 if TYPE_CHECKING:
-    from fockhull import sweeps
+    from fockhull import interchange, sweeps
     from fockhull.sweeps import sweep
 
 # loaded when first asked for: they import xarray and more
-_LAZY = {"sweep": ("fockhull.sweeps", "sweep"), "sweeps": ("fockhull.sweeps", None)}
+_LAZY = {
+    "interchange": ("fockhull.interchange", None),
+    "sweep": ("fockhull.sweeps", "sweep"),
+    "sweeps": ("fockhull.sweeps", None),
+}
 
 
 def __getattr__(name: str) -> Any:
