@@ -204,13 +204,13 @@ def _dirac(
 def _tensor(interaction: Interaction) -> ScalarArray:
     """Return all v_pqrs in Dirac order."""
     d = interaction.sector.modes
-    v: ScalarArray = np.zeros((d,) * 4, dtype=interaction.dtype)
+    v: Any = np.zeros((d,) * 4, dtype=interaction.dtype)
     density, tensor, entries = interaction._core.parts()
     if density is not None:
         p, q = np.ogrid[:d, :d]
         v[p, q, p, q] += density
     if tensor is not None:
-        v = v + tensor
+        v += tensor
     if entries is not None:
         indices, values = entries
         np.add.at(v, tuple(indices.T), values)

@@ -1,0 +1,45 @@
+"""Configuration of the documentation; `make docs` builds it, no page needs a network."""
+
+import importlib.util
+from pathlib import Path
+
+import fockhull
+
+project = "fockhull"
+copyright = "the fockhull authors"  # noqa: A001
+version = release = fockhull.__version__
+
+extensions = [
+    "sphinx.ext.autodoc",
+    "sphinx.ext.autosummary",
+    "sphinx.ext.mathjax",
+    "numpydoc",
+    "myst_nb",
+]
+exclude_patterns = ["_build"]
+html_theme = "furo"
+html_title = f"fockhull {release}"
+html_copy_source = False
+html_show_sphinx = False
+nitpicky = True
+
+# one file of MathJax with its glyphs inside, from a package on PyPI
+_package = importlib.util.find_spec("sphinx-mathjax-offline")
+_mathjax = Path(_package.origin).parent / "static" / "mathjax" / "tex-svg-full.js"
+html_static_path = ["_static", str(_mathjax)]
+mathjax_path = _mathjax.name
+mathjax3_config = {"svg": {"fontCache": "global"}}
+
+myst_enable_extensions = ["dollarmath", "colon_fence", "deflist"]
+myst_heading_anchors = 3
+nb_execution_mode = "force"
+nb_execution_timeout = 120
+nb_execution_raise_on_error = True
+nb_output_stderr = "severe"
+nb_ipywidgets_js = {}
+
+default_role = "autolink"
+autodoc_member_order = "bysource"
+autodoc_typehints = "none"
+numpydoc_show_class_members = False
+numpydoc_validation_checks = {"GL03", "PR01", "PR02", "RT01"}
