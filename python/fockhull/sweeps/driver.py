@@ -6,9 +6,11 @@ import sys
 import time
 from collections.abc import Callable
 from concurrent.futures import BrokenExecutor, Future
+from importlib import import_module
+from importlib.util import find_spec
 from typing import Any
 
-from tqdm.auto import tqdm
+from tqdm import tqdm
 
 from fockhull.sweeps.grid import Grid
 from fockhull.sweeps.journal import Entry
@@ -187,6 +189,8 @@ def _event(level: int, event: str, **facts: Any) -> None:
 
 def _bar(total: int, done: int, shown: bool) -> Any:
     """Return a progress bar; where it cannot be redrawn it writes a line now and then."""
-    redrawn = sys.stderr.isatty() or "ipykernel" in sys.modules
-    interval = 0.1 if redrawn else _SECONDS_BETWEEN_LINES
-    return tqdm(total=total, initial=done, disable=not shown, unit="point", mininterval=interval)
+    in_notebook = "ipykernel" in sys.modules
+    interval = 0.1 if sys.stderr.isatty() or in_notebook else _SECONDS_BETWEEN_LINES
+    has_widgets = in_notebook and find_spec("ipywidgets") is not None
+    kind = import_module("tqdm.notebook").tqdm if has_widgets else tqdm
+    return kind(total=total, initial=done, disable=not shown, unit="point", mininterval=interval)
