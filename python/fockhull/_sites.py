@@ -44,7 +44,7 @@ def site_energies(energies: npt.ArrayLike) -> RealArray:
 def harmonic_trap(
     positions: npt.ArrayLike, strength: float, centre: npt.ArrayLike | None = None
 ) -> RealArray:
-    """Site energies strength * |x - centre|^2 of a harmonic trap.
+    """Site energies ``strength * |x - centre|^2`` of a harmonic trap.
 
     Parameters
     ----------

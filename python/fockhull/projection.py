@@ -141,7 +141,7 @@ class Projection(Frozen):
 
     @property
     def distance(self) -> Any:
-        """Distance |x - y| (for density matrices in the Frobenius norm), an upper bound."""
+        """Distance ``|x - y|`` (for density matrices in the Frobenius norm), an upper bound."""
         return self._numbers(self._core.distance)
 
     @property

@@ -29,7 +29,7 @@ VERIFY_TOLERANCE = 1e-9
 class ExplicitEnsemble(FrozenArrays):
     """A density operator in the convex hull of those with spectrum w, given explicitly.
 
-    Gamma = (1 - t) sum_k p_k |k><k| + t Gamma', where Gamma' is a mixture of configurations in
+    ``Gamma = (1 - t) sum_k p_k |k><k| + t Gamma'``, where Gamma' is a mixture of configurations in
     the natural orbitals of a density matrix next to gamma; t is zero or tiny and makes gamma
     exact.
     """
@@ -40,7 +40,7 @@ class ExplicitEnsemble(FrozenArrays):
     probabilities: RealArray
     """p_k, decreasing, shape (m,)."""
     rows: ScalarArray
-    """The states |k> as rows, shape (m, dimension)."""
+    """The states ``|k>`` as rows, shape (m, dimension)."""
     remainder_share: float = 0.0
     """The share t."""
     remainder: ConfigurationEnsemble | None = None

@@ -40,7 +40,7 @@ class RegularizedValue(FrozenArrays):
     lower: float
     """From the dual, less the error bounds of the energies."""
     upper: float
-    """From `ensemble`: Tr(Gamma W) + |gamma - gamma'|^2 / (2 epsilon)."""
+    """From `ensemble`: ``Tr(Gamma W) + |gamma - gamma'|^2 / (2 epsilon)``."""
     potential: ScalarArray
     """The maximising h, unique up to the constant; minus h is the gradient."""
     density_matrix: ScalarArray

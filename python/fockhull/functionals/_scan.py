@@ -29,11 +29,11 @@ class ForceFit(NamedTuple):
     """A power law for the boundary force, dF/dD = prefactor x D^exponent."""
 
     exponent: float
-    """Slope of log |dF/dD| against log D."""
+    """Slope of ``log |dF/dD|`` against log D."""
     prefactor: float
     """With the sign of the force: negative where the boundary repels."""
     deviation: float
-    """Largest deviation of log |dF/dD| from the line."""
+    """Largest deviation of ``log |dF/dD|`` from the line."""
 
 
 @dataclass(frozen=True, eq=False)
