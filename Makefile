@@ -9,9 +9,9 @@ export MPLBACKEND := Agg
 
 SOURCES := Cargo.toml Cargo.lock pyproject.toml README.md \
            $(shell find src python -type f ! -name '*.pyc' ! -name '*.so')
-PYTHON_SOURCES := python tests demo benches
+PYTHON_SOURCES := python tests demo benches docs
 
-.PHONY: env demo test bench bench-large lint format test-rust test-python docs-rust wheel clean
+.PHONY: env demo docs test bench bench-large lint format test-rust test-python docs-rust wheel clean
 
 env: $(VENV)/installed
 
@@ -36,6 +36,13 @@ $(VENV)/installed: $(VENV)/ready $(SOURCES)
 
 demo: env
 	@$(BIN)/python demo/run.py
+
+# warnings are errors, notebooks are run, no page may need a network
+docs: env
+	@rm -rf docs/_build
+	@sphinx-build -W --keep-going -q docs docs/_build/html
+	@$(BIN)/python docs/check.py docs/_build/html
+	@echo "The documentation is in docs/_build/html/index.html"
 
 test: lint test-rust docs-rust test-python
 	@echo "All checks passed."
@@ -82,4 +89,4 @@ wheel: env
 	maturin build --release --out dist
 
 clean:
-	rm -rf target dist $(VENV)
+	rm -rf target dist docs/_build $(VENV)

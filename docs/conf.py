@@ -6,7 +6,7 @@ from pathlib import Path
 import fockhull
 
 project = "fockhull"
-copyright = "the fockhull authors"  # noqa: A001
+copyright = "the fockhull authors"
 version = release = fockhull.__version__
 
 extensions = [
@@ -42,4 +42,27 @@ default_role = "autolink"
 autodoc_member_order = "bysource"
 autodoc_typehints = "none"
 numpydoc_show_class_members = False
-numpydoc_validation_checks = {"GL03", "PR01", "PR02", "RT01"}
+# other projects' names stay unlinked, since no page may need a network
+nitpick_ignore_regex = [("py:.*", r"(numpy|scipy|xarray|concurrent)\..*")]
+nitpick_ignore = [("py:obj", "grid")]  # an argument with the name of a module
+
+
+def hide_constructor(app, what, name, obj, options, signature, result):  # noqa: PLR0917
+    """Hide the signature of classes that the package makes itself."""
+    made_inside = what == "class" and "Parameters\n" not in (obj.__doc__ or "")
+    return ("", None) if made_inside else None
+
+
+def find_public_name(app, env, node, contnode):
+    """Resolve names as users write them, from any module."""
+    if node.get("reftarget") not in fockhull.__all__:
+        return None
+    python = env.get_domain("py")
+    target = f"fockhull.{node['reftarget']}"
+    return python.resolve_xref(env, node["refdoc"], app.builder, "obj", target, node, contnode)
+
+
+def setup(app):
+    """Connect the two."""
+    app.connect("autodoc-process-signature", hide_constructor)
+    app.connect("missing-reference", find_public_name)
