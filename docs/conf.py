@@ -27,6 +27,7 @@ nitpicky = True
 _package = importlib.util.find_spec("sphinx-mathjax-offline")
 _mathjax = Path(_package.origin).parent / "static" / "mathjax" / "tex-svg-full.js"
 html_static_path = ["_static", str(_mathjax)]
+html_css_files = ["wide.css"]
 mathjax_path = _mathjax.name
 mathjax3_config = {"svg": {"fontCache": "global"}}
 
