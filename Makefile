@@ -44,7 +44,7 @@ docs: env
 	@$(BIN)/python docs/check.py docs/_build/html
 	@echo "The documentation is in docs/_build/html/index.html"
 
-test: lint test-rust docs-rust test-python
+test: lint test-rust docs-rust test-python docs
 	@echo "All checks passed."
 
 lint: env

@@ -1,6 +1,7 @@
 """Configuration of the documentation; `make docs` builds it, no page needs a network."""
 
 import importlib.util
+import os
 from pathlib import Path
 
 import fockhull
@@ -37,7 +38,9 @@ nb_execution_mode = "force"
 nb_execution_timeout = 120
 nb_execution_raise_on_error = True
 nb_output_stderr = "severe"
+nb_merge_streams = True
 nb_ipywidgets_js = {}
+os.environ.pop("MPLBACKEND", None)  # notebooks show their figures
 
 default_role = "autolink"
 autodoc_member_order = "bysource"

@@ -164,7 +164,7 @@ class ExclusionPolytope:
 
         A density matrix keeps its natural orbitals. A sum of occupations that differs from the
         particle number is corrected as well: the excess is taken off uniformly over the modes,
-        which contributes \\|sum - N\\| / sqrt(d) to the distance (in quadrature).
+        which contributes ``|sum - N| / sqrt(d)`` to the distance (in quadrature).
 
         Parameters
         ----------

@@ -32,7 +32,8 @@ def test_all_five_are_there():
 
 @pytest.mark.filterwarnings("ignore::DeprecationWarning")  # of the machinery that runs them
 @pytest.mark.parametrize("path", NOTEBOOKS, ids=lambda path: path.stem)
-def test_notebook_runs(path):
+def test_notebook_runs(path, monkeypatch):
+    monkeypatch.delenv("MPLBACKEND", raising=False)  # the kernel then shows figures
     if path.stem == "cluster-sweep":
         pytest.importorskip("distributed")
     notebook = jupytext.read(path)
@@ -44,3 +45,5 @@ def test_notebook_runs(path):
     assert outputs
     shouted = [output.text for output in outputs if output.get("name") == "stderr"]
     assert not shouted
+    pictures = [output for output in outputs if "image/png" in output.get("data", {})]
+    assert len(pictures) == sum("plt.subplots" in cell.source for cell in notebook.cells)
