@@ -41,7 +41,7 @@ __all__ = [
     "write_integrals",
 ]
 
-Format: TypeAlias = Literal["npz", "netcdf", "trexio"]
+_Format: TypeAlias = Literal["npz", "netcdf", "trexio"]
 
 _FORMATS: dict[str, ModuleType] = {"npz": _npz, "netcdf": _netcdf, "trexio": _trexio}
 _ENDINGS = {
@@ -57,7 +57,7 @@ def write_integrals(
     path: str | PathLike[str],
     integrals: Integrals,
     *,
-    format: Format | None = None,
+    format: _Format | None = None,
     overwrite: bool = False,
 ) -> None:
     """Write integrals to a file.
@@ -93,7 +93,7 @@ def write_integrals(
 def read_integrals(
     path: str | PathLike[str],
     *,
-    format: Format | None = None,
+    format: _Format | None = None,
 ) -> Integrals:
     """Read integrals from a file.
 
@@ -125,7 +125,7 @@ def write_density_matrix(
     density_matrix: npt.ArrayLike,
     *,
     domain: Literal["spin-resolved", "spin-summed", "spinless"],
-    format: Format | None = None,
+    format: _Format | None = None,
     overwrite: bool = False,
 ) -> None:
     """Write a one-body density matrix gamma_pq = <a+_q a_p> to a file.
@@ -155,7 +155,7 @@ def write_density_matrix(
 def read_density_matrix(
     path: str | PathLike[str],
     *,
-    format: Format | None = None,
+    format: _Format | None = None,
 ) -> DensityMatrix:
     """Read a one-body density matrix from a file.
 
