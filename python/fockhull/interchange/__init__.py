@@ -24,7 +24,7 @@ from contextlib import contextmanager
 from os import PathLike
 from pathlib import Path
 from types import ModuleType
-from typing import Literal, TypeAlias
+from typing import Literal
 
 import numpy.typing as npt
 
@@ -41,8 +41,6 @@ __all__ = [
     "write_integrals",
 ]
 
-_Format: TypeAlias = Literal["npz", "netcdf", "trexio"]
-
 _FORMATS: dict[str, ModuleType] = {"npz": _npz, "netcdf": _netcdf, "trexio": _trexio}
 _ENDINGS = {
     ".npz": "npz",
@@ -57,7 +55,7 @@ def write_integrals(
     path: str | PathLike[str],
     integrals: Integrals,
     *,
-    format: _Format | None = None,
+    format: Literal["npz", "netcdf", "trexio"] | None = None,
     overwrite: bool = False,
 ) -> None:
     """Write integrals to a file.
@@ -93,7 +91,7 @@ def write_integrals(
 def read_integrals(
     path: str | PathLike[str],
     *,
-    format: _Format | None = None,
+    format: Literal["npz", "netcdf", "trexio"] | None = None,
 ) -> Integrals:
     """Read integrals from a file.
 
@@ -125,7 +123,7 @@ def write_density_matrix(
     density_matrix: npt.ArrayLike,
     *,
     domain: Literal["spin-resolved", "spin-summed", "spinless"],
-    format: _Format | None = None,
+    format: Literal["npz", "netcdf", "trexio"] | None = None,
     overwrite: bool = False,
 ) -> None:
     """Write a one-body density matrix gamma_pq = <a+_q a_p> to a file.
@@ -155,7 +153,7 @@ def write_density_matrix(
 def read_density_matrix(
     path: str | PathLike[str],
     *,
-    format: _Format | None = None,
+    format: Literal["npz", "netcdf", "trexio"] | None = None,
 ) -> DensityMatrix:
     """Read a one-body density matrix from a file.
 
