@@ -20,6 +20,7 @@ from fockhull.interaction import Interaction
 from fockhull.polytope import ExclusionPolytope
 from fockhull.projection import Projection, Stretch, Support
 from fockhull.sectors import Bosons, Fermions, LowestConfigurations, Sector, SpinHalfFermions
+from fockhull.separator import Separator
 
 __all__ = [
     "Bosons",
@@ -39,6 +40,7 @@ __all__ = [
     "MemoryEstimate",
     "Projection",
     "Sector",
+    "Separator",
     "SolveProgress",
     "SpinHalfFermions",
     "Stretch",
@@ -50,18 +52,20 @@ __all__ = [
     "functionals",
     "interchange",
     "lattices",
+    "plot",
     "solve",
     "sweep",
     "sweeps",
 ]
 
 if TYPE_CHECKING:
-    from fockhull import interchange, sweeps
+    from fockhull import interchange, plot, sweeps
     from fockhull.sweeps import sweep
 
-# loaded when first asked for: they import xarray and more
+# loaded when first asked for: they import xarray, matplotlib and more
 _LAZY = {
     "interchange": ("fockhull.interchange", None),
+    "plot": ("fockhull.plot", None),
     "sweep": ("fockhull.sweeps", "sweep"),
     "sweeps": ("fockhull.sweeps", None),
 }

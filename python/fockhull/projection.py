@@ -16,6 +16,7 @@ from fockhull._html import table
 from fockhull._projected import Projected
 from fockhull.configuration_ensemble import ConfigurationEnsemble
 from fockhull.errors import ArgumentError, ArgumentIndexError, ArgumentTypeError
+from fockhull.separator import VERIFY_TOLERANCE, Separator
 
 if TYPE_CHECKING:
     from fockhull.polytope import ExclusionPolytope
@@ -188,6 +189,50 @@ class Projection(Frozen):
         polytope = self._polytope
         parts = self._core.ensemble(self._member)
         return ConfigurationEnsemble(polytope.sector, polytope.weights, polytope.domain, parts)
+
+    @property
+    def separator(self) -> Separator | None:
+        """One-particle energies that prove the point outside; None where there is no proof.
+
+        That is inside, and closer to the boundary than rounding errors let one tell.
+
+        Raises
+        ------
+        ArgumentError
+            For a batch: take a member first, ``projection[index].separator``.
+
+        Examples
+        --------
+        >>> import fockhull as fh
+        >>> P = fh.ExclusionPolytope(fh.Fermions(4, 2), weights=[0.6, 0.4])
+        >>> proof = P.project(occupations=[1, 0.9, 0.1, 0]).separator
+        >>> proof.bound > proof.value, proof.verify()
+        (True, True)
+        """
+        if self._lead:
+            given = f"a batch of shape {self._lead}"
+            raise ArgumentError("separator", given, "a member of it: projection[index].separator")
+        return self._separator
+
+    @cached_property
+    def _separator(self) -> Separator | None:
+        polytope = self._polytope
+        length = float(np.linalg.norm(self.normal))
+        if length <= 0.0:
+            return None
+        h = np.array(self.normal) / length
+        n = self.occupations - self.normal
+        bound, value = float(polytope.support(h).value), float(np.sum(h * n))
+        proof = Separator(
+            polytope.sector,
+            polytope.weights,
+            polytope.domain,
+            read_only(h),
+            read_only(n),
+            bound,
+            value,
+        )
+        return proof if proof.excess > 2.0 * VERIFY_TOLERANCE * proof._scale else None
 
     def __len__(self) -> int:
         if not self._lead:

@@ -1,0 +1,93 @@
+"""One look for all pictures: ink, one accent, line styles that survive black and white."""
+
+from __future__ import annotations
+
+from typing import Any
+
+import matplotlib.pyplot as plt
+from matplotlib.axes import Axes
+from mpl_toolkits.mplot3d.axes3d import Axes3D
+
+from fockhull.errors import ArgumentError, ArgumentTypeError
+
+INK = "#22303c"
+ACCENT = "#b8432f"
+SECOND = "#2f7f86"
+THIRD = "#8a6d1f"
+SHADE = "#ece7dd"
+HATCH = "#c3bcad"
+FORBIDDEN = "////"
+COLOURS = (INK, SECOND, ACCENT, THIRD)
+LINES: tuple[Any, ...] = ("-", (0, (5, 1.6)), (0, (1, 1.2)), (0, (7, 1.6, 1, 1.6)), (0, (3, 3)))
+MARKERS = ("o", "s", "^", "D", "v", "P", "X")
+
+
+def line(index: int) -> dict[str, Any]:
+    """Colour and line style of a curve; together they repeat after 20 curves."""
+    return {"color": COLOURS[index % len(COLOURS)], "ls": LINES[index % len(LINES)], "lw": 1.6}
+
+
+def canvas(ax: Any, *, dimensions: int = 2) -> Any:
+    """Return the caller's axes, or those of a new figure, with the frame of our look."""
+    kind, name = (
+        (Axes, "matplotlib Axes") if dimensions == 2 else (Axes3D, "three-dimensional Axes")
+    )
+    if ax is None:
+        subplot = {} if dimensions == 2 else {"projection": "3d"}
+        _, ax = plt.subplots(layout="constrained", subplot_kw=subplot)
+    if not isinstance(ax, Axes):
+        raise ArgumentTypeError("ax", type(ax).__name__, f"{name}, or None for a new figure")
+    if not isinstance(ax, kind) or (dimensions == 2 and isinstance(ax, Axes3D)):
+        made = "subplots()" if dimensions == 2 else 'subplots(subplot_kw={"projection": "3d"})'
+        raise ArgumentError("ax", type(ax).__name__, f"{name}, made by {made}")
+    _frame(ax)
+    return ax
+
+
+def _frame(ax: Any) -> None:
+    if not isinstance(ax, Axes3D):
+        ax.spines[["top", "right"]].set_visible(False)
+        ax.spines[["left", "bottom"]].set_color(INK)
+        ax.tick_params(colors=INK)
+    else:
+        for axis in (ax.xaxis, ax.yaxis, ax.zaxis):
+            axis.pane.set(facecolor="white", edgecolor=HATCH)
+            axis.set_tick_params(colors=INK)
+        ax.grid(False)
+        ax.computed_zorder = False  # points stay visible inside a solid
+
+
+def named(quantity: str, unit: str | None) -> str:
+    """Label of an axis, with the unit in brackets."""
+    return quantity if unit is None else f"{quantity} ({unit})"
+
+
+def text(argument: str, value: object) -> str | None:
+    """Return a label given by the caller, or None."""
+    if value is not None and not isinstance(value, str):
+        raise ArgumentTypeError(argument, repr(value), "a string or None")
+    return value
+
+
+def forbid(ax: Axes, low: float, high: float) -> None:
+    """Hatch a band of values that no ensemble with the weights can have."""
+    ax.axhspan(low, high, facecolor=SHADE, hatch=FORBIDDEN, edgecolor=HATCH, lw=0, zorder=0)
+
+
+def spread(index: int, curves: int, points: int, most: int) -> tuple[int, int]:
+    """First marker and step along a curve: curves that coincide show all their markers."""
+    step = max(1, points // most)
+    return index * step // max(curves, 1), step
+
+
+def legend(ax: Any, **options: Any) -> None:
+    """Name the curves, if any is named."""
+    if ax.get_legend_handles_labels()[0]:
+        ax.legend(
+            labelcolor=INK,
+            handlelength=3.2,
+            facecolor="white",
+            edgecolor="none",
+            framealpha=0.8,
+            **options,
+        )
