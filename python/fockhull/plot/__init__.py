@@ -5,9 +5,10 @@ and scales stay the caller's. Line styles, markers and hatches tell things apart
 alone. No setting of matplotlib is changed. Needs matplotlib; domains in three dimensions SciPy.
 """
 
-from fockhull.plot.against import gap, occupations, slack, spectrum
 from fockhull.plot.bars import occupation_bars, slack_bars
+from fockhull.plot.constraints import occupations, slack
 from fockhull.plot.domains import domain
+from fockhull.plot.spectra import gap, spectrum
 
 __all__ = [
     "domain",

@@ -189,8 +189,7 @@ def tightest(
     polytope: ExclusionPolytope, points: RealArray, most: int | None
 ) -> tuple[Inequality, ...]:
     """Return the inequalities, or of them the `most` of least slack, in their order."""
-    if not isinstance(polytope, ExclusionPolytope):
-        raise ArgumentTypeError("polytope", type(polytope).__name__, "an ExclusionPolytope")
+    checked_polytope(polytope)
     count = None if most is None else arguments.count("most", most)
     inequalities = polytope.inequalities()
     if count is None or count >= len(inequalities):
@@ -214,11 +213,16 @@ def single_point(
     occupations: npt.ArrayLike | None,
 ) -> RealArray:
     """Return the decreasing occupations of one point."""
-    if not isinstance(polytope, ExclusionPolytope):
-        raise ArgumentTypeError("polytope", type(polytope).__name__, "an ExclusionPolytope")
+    checked_polytope(polytope)
     values, lead, orbitals = polytope._points(density_matrix, occupations)
     if lead:
         argument = "occupations" if orbitals is None else "density_matrix"
         raise ArgumentError(argument, f"a batch of shape {lead}", "a single point")
     point: RealArray = -np.sort(-values.reshape(polytope.shape), axis=-1)
     return point
+
+
+def checked_polytope(polytope: object) -> None:
+    """Refuse what is not a polytope."""
+    if not isinstance(polytope, ExclusionPolytope):
+        raise ArgumentTypeError("polytope", type(polytope).__name__, "an ExclusionPolytope")

@@ -57,16 +57,23 @@ def _frame(ax: Any) -> None:
         ax.computed_zorder = False  # points stay visible inside a solid
 
 
-def named(quantity: str, unit: str | None) -> str:
-    """Label of an axis, with the unit in brackets."""
-    return quantity if unit is None else f"{quantity} ({unit})"
+def axis_names(
+    parameter: str, parameter_unit: object, quantity: str, energy_unit: object = None
+) -> tuple[str, str]:
+    """Return the names of both axes, with the caller's units in brackets."""
+    units = {"parameter_unit": parameter_unit, "energy_unit": energy_unit}
+    for argument, unit in units.items():
+        if unit is not None and not isinstance(unit, str):
+            raise ArgumentTypeError(argument, repr(unit), "a string or None")
+    named = zip((parameter, quantity), units.values(), strict=True)
+    across, up = (name if unit is None else f"{name} ({unit})" for name, unit in named)
+    return across, up
 
 
-def text(argument: str, value: object) -> str | None:
-    """Return a label given by the caller, or None."""
-    if value is not None and not isinstance(value, str):
-        raise ArgumentTypeError(argument, repr(value), "a string or None")
-    return value
+def name_axes(ax: Any, names: tuple[str, str]) -> None:
+    """Write the names of the axes."""
+    ax.set_xlabel(names[0], color=INK)
+    ax.set_ylabel(names[1], color=INK)
 
 
 def forbid(ax: Axes, low: float, high: float) -> None:

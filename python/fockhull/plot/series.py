@@ -32,6 +32,8 @@ class Series:
     """Shape (m,); None without weights."""
     occupations: RealArray | None
     """Natural occupations, shape (m, d) or (m, 2, d); None without weights."""
+    sector: str | None
+    """The sector in words, where known."""
 
 
 def series(results: Any, parameter: str, values: npt.ArrayLike | None) -> Series:
@@ -63,15 +65,16 @@ def _of_ensembles(results: Sequence[Any], values: npt.ArrayLike | None) -> Serie
         raise ArgumentError("values", f"shape {x.shape}", f"shape ({len(results)},)")
     r = min(len(one.energies) for one in results)
     weighted = all(one.weights is not None for one in results)
-    shapes = {one.hamiltonian.sector.shape for one in results}
-    if len(shapes) > 1:
-        raise ArgumentError("results", f"occupations of shapes {shapes}", "ensembles of one sector")
+    sectors = sorted({repr(one.hamiltonian.sector) for one in results})
+    if len(sectors) > 1:
+        raise ArgumentError("results", " and ".join(sectors), "ensembles of one sector")
     return Series(
         x,
         np.array([one.energies[:r] for one in results]),
         np.array([_multiplicities(one, r) for one in results]),
         np.array([one.energy for one in results]) if weighted else None,
         np.array([one.occupations for one in results]) if weighted else None,
+        sectors[0],
     )
 
 
@@ -102,6 +105,7 @@ def _of_dataset(results: Any, parameter: str) -> Series:
         np.where(np.isfinite(energies), same.sum(axis=2), 1),
         _variable(results, parameter, "energy", ()),
         _variable(results, parameter, "occupations", (*spin, "natural_orbital")),
+        results.attrs.get("sector"),
     )
 
 
