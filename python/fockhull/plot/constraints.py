@@ -70,9 +70,9 @@ def occupations(
     data = series(results, parameter, values)
     numbers = _numbers(data, results, polytope)
     d = numbers.shape[-1]
-    count = None if leading is None else arguments.position("leading", leading, d + 1)
-    if count == 0:
-        raise ArgumentError("leading", 0, f"an integer from 1 to {d}")
+    count = None if leading is None else arguments.count("leading", leading)
+    if count is not None and count > d:
+        raise ArgumentError("leading", count, f"an integer from 1 to {d}")
     name = "occupation" if count is None else f"sum of {count} leading occupations"
     if polytope is not None and polytope.domain == "spin-summed":
         name = name.replace("occupation", "spin-summed occupation")
