@@ -73,6 +73,8 @@ class Separator(FrozenArrays):
             n = arguments.reals("occupations", occupations)
         if n.shape != self.potential.shape or not np.isfinite(self.potential).all():
             return False
+        if not self._has_valid_weights():
+            return False
         value = math.fsum(np.ravel(self.potential * n))
         bound = self._recomputed_bound()
         tolerance = VERIFY_TOLERANCE * self._scale
@@ -82,6 +84,11 @@ class Separator(FrozenArrays):
             and abs(value - self.value) <= tolerance
             and bound - value > tolerance
         )
+
+    def _has_valid_weights(self) -> bool:
+        w = self.weights
+        falling = bool((np.diff(w) <= 0.0).all()) and len(w) > 0 and w[-1] > 0.0
+        return falling and abs(math.fsum(w) - 1.0) <= VERIFY_TOLERANCE
 
     @property
     def _scale(self) -> float:
