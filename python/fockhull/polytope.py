@@ -64,6 +64,15 @@ class ExclusionPolytope:
     False
     >>> P.project(occupations=[1, 1, 0.9, 0.1, 0, 0]).occupations.round(6)
     array([0.9, 0.9, 0.8, 0.2, 0.1, 0.1])
+
+    Site occupations, in any order: the diagonal of gamma in any basis is a mixture of permuted
+    natural occupations (Schur and Horn; arXiv:2506.09960), so it lies in the same polytope. A
+    lattice density outside belongs to no ensemble with these weights:
+
+    >>> P.contains(occupations=[0.1, 0.9, 0.9, 0.1, 0.9, 0.1])
+    False
+    >>> P.contains(occupations=[0.2, 0.8, 0.8, 0.2, 0.8, 0.2])
+    True
     """
 
     __slots__ = ("_core", "_domain", "_inequalities", "_sector", "_weights")
