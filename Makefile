@@ -79,6 +79,7 @@ test-python: env
 bench: env
 	cargo bench --quiet --bench eigen
 	python benches/compare.py
+	python benches/polytope.py
 
 # the half-filled ring of 16 sites: needs about 20 GiB and much patience
 bench-large: env

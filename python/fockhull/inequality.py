@@ -76,8 +76,11 @@ class Inequality(FrozenArrays):
         return slack if slack.ndim else float(slack)
 
     def distance(self, occupations: npt.ArrayLike) -> Any:
-        """Slack over the length of the normal at fixed particle numbers (signed)."""
-        return self.slack(occupations) / max(self._normal_length, np.finfo(float).tiny)
+        """Slack over the length of the normal at fixed particle numbers (signed).
+
+        The slack itself in domains of one point, where particle numbers fix the left-hand side.
+        """
+        return self.slack(occupations) / (self._normal_length or 1.0)
 
     def __str__(self) -> str:
         return self._sentence

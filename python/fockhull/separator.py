@@ -126,5 +126,7 @@ class Separator(FrozenArrays):
 def _are_distinct_configurations(sector: Sector, rows: npt.NDArray[np.int64]) -> bool:
     numbers_fit = (rows.sum(axis=-1) == np.asarray(sector.particles)).all() and (rows >= 0).all()
     exclusive = isinstance(sector, Bosons) or bool((rows <= 1).all())
-    flat = rows.reshape(len(rows), -1)
-    return bool(numbers_fit and exclusive and len(np.unique(flat, axis=0)) == len(rows))
+    if not (numbers_fit and exclusive):
+        return False
+    compact = rows.astype(np.min_scalar_type(rows.max(initial=0)))
+    return len({row.tobytes() for row in compact}) == len(rows)

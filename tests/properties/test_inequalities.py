@@ -42,7 +42,7 @@ def test_verdicts_agree(polytope: Polytope, rng: Any) -> None:
 
 @given(polytopes(), generators())
 def test_the_list_gives_no_more_than_the_distance(polytope: Polytope, rng: Any) -> None:
-    """A violated inequality is as far away as the polytope at most, and one meets it outside."""
+    """A violated inequality is as far away as the polytope at most."""
     n = scattered(polytope, rng)
     distance = polytope.distance(occupations=n)
     violations = [-float(one.distance(n)) for one in polytope.inequalities()]

@@ -119,6 +119,12 @@ def test_more_weights_than_configurations(sector: Any) -> None:
     assert_allclose(full.generating_vertices(), [centre], rtol=0.0, atol=1e-12)
 
 
+def test_inequalities_without_a_normal() -> None:
+    """In one mode the particle number says everything; rounding is no distance."""
+    for only in fh.ExclusionPolytope(fh.Bosons(1, 3), [1.0]).inequalities():
+        assert abs(only.distance([3.0 + 1e-15])) < 1e-14
+
+
 def test_levels_beyond_the_list() -> None:
     """No inequality appears later than the last weight."""
     assert W.new_at(4) == ()
