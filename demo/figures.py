@@ -11,14 +11,10 @@ from matplotlib.axes import Axes
 from matplotlib.figure import Figure
 from matplotlib.lines import Line2D
 
+from fockhull.plot.look import ACCENT, HATCH, INK, SECOND, SHADE
 from noisy_measurement import Measurements
 from parameter_sweep import Sweep, leading_limit
 
-INK = "#22303c"
-ACCENT = "#b8432f"
-SECOND = "#2f7f86"
-SHADE = "#ece7dd"
-HATCH = "#c3bcad"
 ENSEMBLE: dict[str, Any] = {
     "color": "black",
     "lw": 0.8,
