@@ -57,6 +57,7 @@ def objects() -> dict[str, Any]:
         "projection": PROJECTION,
         "batch": POLYTOPE.project(occupations=[[OUTSIDE, INSIDE]]),
         "configurations": PROJECTION.ensemble,
+        "separator": PROJECTION.separator,
         "member": POLYTOPE.project(occupations=[OUTSIDE, INSIDE])[1],
         "inequality": POLYTOPE.inequalities()[0],
         "tightest": POLYTOPE.tightest(occupations=INSIDE),
@@ -68,6 +69,7 @@ def objects() -> dict[str, Any]:
 
 
 OBJECTS = objects()
+CERTIFIED = fh.ExclusionPolytope | fh.Projection | fh.ConfigurationEnsemble | fh.Separator
 PLAIN = {"memory", "level count", "support", "lowest", "tightest"}
 EVERY_KIND = pytest.mark.parametrize("kind", OBJECTS)
 
@@ -101,6 +103,7 @@ CONTENT: dict[type, Callable[[Any], Any]] = {
         e.occupations(),
         *(e.configurations(k) for k in range(len(e))),
     ],
+    fh.Separator: lambda s: [s.potential, s.occupations, s.weights, s.bound, s.value, s.verify()],
     fh.Inequality: lambda i: [i.coefficients, i.bound, i.bound_weights, str(i), i.latex],
     fh.Stretch: lambda s: [s.value, s.lower, s.boundary, s.normal, s.constraint],
 }
@@ -158,7 +161,7 @@ def test_reprs(kind: str) -> None:
     assert text.startswith(type(value).__name__ + "(")
     assert "object at 0x" not in text
     assert len(text) < 220 or kind in PLAIN
-    if isinstance(value, fh.ExclusionPolytope | fh.Projection | fh.ConfigurationEnsemble):
+    if isinstance(value, CERTIFIED):
         assert "spin-resolved" in text
 
 
