@@ -282,6 +282,28 @@ def test_one_marker_for_each_size_of_multiplet() -> None:
     assert markers["3 levels"].get_marker() != markers["2 levels"].get_marker()
 
 
+def test_a_crossing_is_marked_wherever_it_is() -> None:
+    """Of doublets that last some are left out, of those at one value none."""
+    m = 200
+    energies = np.zeros((m, 4))
+    energies[:, 2:] = [1.0, 2.0]
+    multiplet = np.tile([1, 1, 2, 3], (m, 1))
+    energies[77, 3], multiplet[77, 3] = 1.0, 2
+    results = xr.Dataset(
+        {"energies": (("x", "level"), energies), "multiplet": (("x", "level"), multiplet)},
+        {"x": np.arange(m)},
+    )
+    drawn = [
+        line for line in fh.plot.spectrum(results, "x").lines if line.get_label() == "2 levels"
+    ]
+    (markers,) = drawn
+    x, y = markers.get_data()
+    assert_array_equal(x[y == 1.0], [77, 77])
+    lasting = np.unique(x[y == 0.0])
+    assert {0, m - 1} <= set(lasting)
+    assert len(lasting) <= 26
+
+
 def test_gap(dataset: xr.Dataset) -> None:
     ax = fh.plot.gap(dataset, "U", energy_unit="t")
     expected = [e.energies[1] - e.energies[0] for e in ENSEMBLES]

@@ -18,12 +18,20 @@ SHADE = "#ece7dd"
 HATCH = "#c3bcad"
 FORBIDDEN = "////"
 COLOURS = (INK, SECOND, ACCENT, THIRD)
-LINES: tuple[Any, ...] = ("-", (0, (5, 1.6)), (0, (1, 1.2)), (0, (7, 1.6, 1, 1.6)), (0, (3, 3)))
+LINES: tuple[Any, ...] = (
+    "-",
+    (0, (5, 1.6)),
+    (0, (1, 1.2)),
+    (0, (7, 1.6, 1, 1.6)),
+    (0, (3, 3)),
+    (0, (12, 2)),
+    (0, (3, 1, 1, 1, 1, 1)),
+)
 MARKERS = ("o", "s", "^", "D", "v", "P", "X")
 
 
 def line(index: int) -> dict[str, Any]:
-    """Colour and line style of a curve; together they repeat after 20 curves."""
+    """Colour and line style of a curve; together they repeat after 28 curves."""
     return {"color": COLOURS[index % len(COLOURS)], "ls": LINES[index % len(LINES)], "lw": 1.6}
 
 

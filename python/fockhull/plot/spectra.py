@@ -88,22 +88,18 @@ def spectrum(
 
 
 def _mark_multiplets(ax: Any, data: Series) -> None:
-    """One marker for each multiplet and value; those that last over many values are thinned."""
+    """Mark where levels are degenerate; of what lasts over many values, ends and some between."""
+    step = -(-len(data.values) // MOST_MARKERS)
     for multiplicity in np.unique(data.multiplicities[data.multiplicities > 1]):
         marked = data.multiplicities == multiplicity
-        step = max(1, int(np.ceil(marked.any(axis=1).sum() / MOST_MARKERS)))
-        rows = np.flatnonzero(marked.any(axis=1))[::step]
-        places = [(row, level) for row in rows for level in np.flatnonzero(marked[row])]
-        x, y = (
-            np.array(side)
-            for side in zip(
-                *((data.values[i], data.energies[i, j]) for i, j in places), strict=True
-            )
-        )
+        padded = np.pad(marked, ((1, 1), (0, 0)))
+        inside = padded[:-2] & padded[2:]
+        inside[::step] = False
+        row, level = np.nonzero(marked & ~inside)
+        style = {"ms": 6.5, "mfc": "white", "mec": look.INK, "mew": 1.2, "ls": "none"}
         marker = look.MARKERS[min(int(multiplicity) - 2, len(look.MARKERS) - 1)]
-        ax.plot(
-            x, y, marker, ms=6.5, mfc="white", mec=look.INK, mew=1.2, label=f"{multiplicity} levels"
-        )
+        name = f"{multiplicity} levels"
+        ax.plot(data.values[row], data.energies[row, level], marker=marker, label=name, **style)
 
 
 def gap(
