@@ -20,6 +20,7 @@ __all__ = [
     "density_matrices",
     "lowest_levels",
     "spin_squared",
+    "transition_density_matrices",
 ]
 
 __version__: str

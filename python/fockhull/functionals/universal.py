@@ -26,7 +26,6 @@ __all__ = ["UniversalFunctional"]
 
 RealArray = npt.NDArray[np.float64]
 ScalarArray = npt.NDArray[np.float64 | np.complex128]
-Domain = Literal["spin-resolved", "spin-summed"]
 
 DEFAULT_TOLERANCE = 1e-8
 
@@ -88,7 +87,7 @@ class UniversalFunctional(Frozen):
         self,
         interaction: Interaction,
         weights: npt.ArrayLike,
-        domain: Domain | None = None,
+        domain: Literal["spin-resolved", "spin-summed"] | None = None,
         *,
         variables: Literal["diagonal"] | npt.ArrayLike | None = None,
         one_body: npt.ArrayLike | None = None,
