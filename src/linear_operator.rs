@@ -18,6 +18,12 @@ pub trait LinearOperator<T: Scalar>: Sync {
     /// Only [`crate::error::Error::Interrupted`], from operators that poll while they work.
     fn apply(&self, block: ArrayView2<'_, T>, out: ArrayViewMut2<'_, T>) -> Result<()>;
 
+    /// Whether a product takes much longer than reading a few dozen vectors. Solvers then save
+    /// products rather than passes over their basis.
+    fn has_costly_products(&self) -> bool {
+        false
+    }
+
     /// The diagonal matrix elements, real since the map is Hermitian.
     fn diagonal(&self) -> Array1<f64>;
 }

@@ -4,14 +4,16 @@
 //! With V the basis, T = <V, H V> and Q the residual block, H V = V T + Q B on the last block.
 //! The residual norm of the Ritz vector V y is then |B y_last|, without touching vectors.
 
+use super::filter::Filter;
 use super::orthogonal::{Purge, fill_random, orthonormalize, rotate};
 use crate::dense::eigh;
 use crate::error::{Error, Result};
 use crate::linear_operator::LinearOperator;
 use crate::scalar::Scalar;
-use ndarray::{Array2, ArrayView2, ArrayViewMut2, s};
+use ndarray::{Array2, ArrayView2, ArrayViewMut2, Axis, s};
 use rand::SeedableRng;
 use rand_chacha::ChaCha8Rng;
+use std::ops::Range;
 
 /// Weight of the random vector that joins given starts: it must reach what they do not contain.
 const RANDOM_PART: f64 = 0.01;
@@ -21,6 +23,9 @@ const RITZ_INTERVAL: usize = 16;
 /// Ritz pairs of the basis as it stands: levels, coefficients in columns, residual norms.
 #[derive(Clone)]
 pub(super) struct Ritz<T> {
+    /// Eigenvalues of the projected matrix.
+    images: Vec<f64>,
+    /// The levels that belong to them; through a filter, only those below its interval.
     pub values: Vec<f64>,
     pub coefficients: Array2<T>,
     pub residuals: Vec<f64>,
@@ -29,9 +34,28 @@ pub(super) struct Ritz<T> {
 impl<T: Scalar> Ritz<T> {
     fn empty() -> Self {
         Ritz {
+            images: Vec::new(),
             values: Vec::new(),
             coefficients: Array2::zeros((0, 0)),
             residuals: Vec::new(),
+        }
+    }
+
+    /// The normalised sum of the `keep` lowest Ritz vectors as the only row: its energy, and a
+    /// bound on its residual norm. Nothing if not all of their levels are known.
+    fn mean(&self, keep: usize) -> Self {
+        let (Some(values), Some(residuals)) = (self.values.get(..keep), self.residuals.get(..keep))
+        else {
+            return Ritz::empty();
+        };
+        let energy = values.iter().sum::<f64>() / keep as f64;
+        let variance = values.iter().map(|v| (v - energy).powi(2)).sum::<f64>() / keep as f64;
+        let square: f64 = residuals.iter().map(|r| r * r).sum();
+        Ritz {
+            images: vec![energy],
+            values: vec![energy],
+            coefficients: Array2::eye(1),
+            residuals: vec![variance.sqrt() + square.sqrt()],
         }
     }
 }
@@ -39,6 +63,8 @@ impl<T: Scalar> Ritz<T> {
 /// The basis and its projected problem. Rows in memory: locked, Krylov, residual block.
 pub(super) struct BlockLanczos<'a, T: Scalar> {
     operator: &'a dyn LinearOperator<T>,
+    /// What stands in the operator's place, if anything.
+    filter: Option<Filter<T>>,
     dimension: usize,
     storage: Vec<T>,
     /// Vectors left alone at the front.
@@ -57,6 +83,8 @@ pub(super) struct BlockLanczos<'a, T: Scalar> {
     fresh: bool,
     /// Estimate from below of the norm of the operator.
     pub scale: f64,
+    /// The same of the filter.
+    norm: f64,
     /// Products with the operator so far.
     pub products: usize,
     /// Residual norm to be reached: overlaps in the basis must not spoil it.
@@ -88,6 +116,7 @@ impl<'a, T: Scalar> BlockLanczos<'a, T> {
             })?;
         Ok(BlockLanczos {
             operator,
+            filter: None,
             dimension,
             storage,
             locked: 0,
@@ -99,6 +128,7 @@ impl<'a, T: Scalar> BlockLanczos<'a, T> {
             ritz: Ritz::empty(),
             fresh: false,
             scale: 0.0,
+            norm: 0.0,
             products: 0,
             accuracy,
             generator: ChaCha8Rng::seed_from_u64(seed),
@@ -168,12 +198,7 @@ impl<'a, T: Scalar> BlockLanczos<'a, T> {
         };
         let split = orthonormalize(basis, block, &purge, &mut generator)?;
         self.locked = locked;
-        self.size = split.outside.nrows();
-        self.active = self.size;
-        self.first_coupled = 0;
-        self.projected = Array2::zeros((0, 0));
-        self.coupling = Array2::zeros((0, self.active));
-        self.ritz = Ritz::empty();
+        self.start_over(split.outside.nrows());
         Ok(())
     }
 
@@ -184,14 +209,14 @@ impl<'a, T: Scalar> BlockLanczos<'a, T> {
     /// What the operator returns; the Ritz pairs are then still those of before.
     pub fn step(&mut self) -> Result<()> {
         let (rows, active, locked) = (self.rows(), self.active, self.locked);
-        let operator = self.operator;
-        let (basis, mut image) = self.split(rows, active);
-        operator.apply(basis.slice(s![rows - active.., ..]), image.view_mut())?;
-        self.products += active;
+        self.multiply(rows - active..rows, rows)?;
         let purge = Purge {
             first_expected: if locked > 0 { 0 } else { self.first_coupled },
-            noise: 16.0 * f64::EPSILON * self.scale,
-            overlap: 0.05 * self.accuracy / self.scale.max(self.accuracy),
+            noise: 16.0 * f64::EPSILON * self.norm(),
+            overlap: match self.filter {
+                Some(_) => 0.0,
+                None => 0.05 * self.accuracy / self.scale.max(self.accuracy),
+            },
         };
         let mut generator = self.generator.clone();
         let (basis, image) = self.split(rows, active);
@@ -201,11 +226,47 @@ impl<'a, T: Scalar> BlockLanczos<'a, T> {
         self.coupling = split.outside;
         self.fresh = false;
         // in a large basis the projected problem costs as much as a product
-        let due = self.size >= self.ritz.values.len() + self.size / RITZ_INTERVAL;
+        let due = self.size >= self.ritz.images.len() + self.size / RITZ_INTERVAL;
         if due || self.coupling.nrows() == 0 || self.exhausted() {
             self.refresh()?;
         }
         Ok(())
+    }
+
+    /// Overwrites the rows from `to` on with the images of the rows `from`, all before them.
+    ///
+    /// # Errors
+    /// What the operator returns.
+    pub fn multiply(&mut self, from: Range<usize>, to: usize) -> Result<()> {
+        let (operator, mut filter) = (self.operator, self.filter.take());
+        let (rows, image) = self.split(to, from.len());
+        let block = rows.slice(s![from.clone(), ..]);
+        let done = match &mut filter {
+            Some(filter) => filter.apply(operator, block, image),
+            None => operator.apply(block, image),
+        };
+        self.filter = filter;
+        done?;
+        self.products += from.len() * self.cost();
+        Ok(())
+    }
+
+    /// Products with the operator for one row.
+    pub fn cost(&self) -> usize {
+        self.filter.as_ref().map_or(1, Filter::degree)
+    }
+
+    /// The filter in use.
+    pub fn filter(&self) -> Option<&Filter<T>> {
+        self.filter.as_ref()
+    }
+
+    /// Estimate from below of the norm of the operator or its filter.
+    pub fn norm(&self) -> f64 {
+        match self.filter {
+            Some(_) => self.norm,
+            None => self.scale,
+        }
     }
 
     /// Whether the Ritz pairs are those of the whole basis.
@@ -253,13 +314,56 @@ impl<'a, T: Scalar> BlockLanczos<'a, T> {
             .values
             .iter()
             .fold(0.0, |top: f64, v| top.max(v.abs()));
-        self.scale = self.scale.max(extreme);
+        let images = eigen.values.to_vec();
+        let mut values = images.clone();
+        let mut residuals: Vec<f64> = residuals.columns().into_iter().map(norm).collect();
+        match &self.filter {
+            Some(filter) => {
+                self.norm = self.norm.max(extreme);
+                values = images.iter().map_while(|&x| filter.energy(x)).collect();
+                for (k, residual) in residuals[..values.len()].iter_mut().enumerate() {
+                    *residual /= filter.slope(values[k], images[k]);
+                }
+            }
+            None => self.scale = self.scale.max(extreme),
+        }
+        residuals.truncate(values.len());
         self.ritz = Ritz {
-            values: eigen.values.to_vec(),
-            residuals: residuals.columns().into_iter().map(norm).collect(),
+            images,
+            values,
+            residuals,
             coefficients: eigen.vectors,
         };
         Ok(())
+    }
+
+    /// Goes on with another filter, or none, from the sum of the `keep` lowest Ritz vectors.
+    pub fn change_filter(&mut self, filter: Option<Filter<T>>, keep: usize) {
+        let chosen = self.ritz.coefficients.slice(s![.., ..keep]);
+        let sum = chosen.sum_axis(Axis(1)) * T::from_real(1.0 / (keep as f64).sqrt());
+        let ritz = self.ritz.mean(keep);
+        let (_, krylov) = self.split(self.locked, self.size);
+        rotate(krylov, sum.insert_axis(Axis(1)).view());
+        self.filter = filter;
+        self.norm = 0.0;
+        self.start_over(1);
+        self.ritz = ritz;
+    }
+
+    /// Goes on without the filter, with nothing but locked rows.
+    pub fn drop_filter(&mut self) {
+        self.filter = None;
+    }
+
+    /// The first `size` Krylov rows, orthonormal, are all there is.
+    fn start_over(&mut self, size: usize) {
+        self.size = size;
+        self.active = size;
+        self.first_coupled = 0;
+        self.projected = Array2::zeros((0, 0));
+        self.coupling = Array2::zeros((0, size));
+        self.ritz = Ritz::empty();
+        self.fresh = false;
     }
 
     /// Makes the residual block the active one.
@@ -278,9 +382,10 @@ impl<'a, T: Scalar> BlockLanczos<'a, T> {
         let (from, width) = ((locked + size) * n, self.residual_width());
         self.storage
             .copy_within(from..from + width * n, (locked + keep) * n);
+        self.ritz.images.truncate(keep);
         self.ritz.values.truncate(keep);
         self.ritz.residuals.truncate(keep);
-        let levels = self.ritz.values.iter().map(|&value| T::from_real(value));
+        let levels = self.ritz.images.iter().map(|&value| T::from_real(value));
         self.projected = Array2::from_diag(&levels.collect::<ndarray::Array1<T>>());
         self.ritz.coefficients = Array2::eye(keep);
         self.first_coupled = 0;

@@ -1,11 +1,13 @@
 //! Lowest levels of Hermitian operators, certified.
 //!
 //! [`lowest_levels`] knows only [`LinearOperator`]. Small problems go to LAPACK; large ones to a
-//! block Lanczos iteration with thick restarts, followed by a search for missed levels in the
-//! orthogonal complement of what was found.
+//! block Lanczos iteration with thick restarts (through a polynomial filter where vectors are
+//! long), followed by a search for missed levels in the orthogonal complement of what was found.
 
 mod certify;
 mod dense;
+mod filter;
+mod filtering;
 mod lanczos;
 mod multiplet;
 mod orthogonal;
@@ -17,6 +19,7 @@ use crate::linear_operator::LinearOperator;
 use crate::progress::Monitor;
 use crate::scalar::Scalar;
 use ndarray::{Array1, Array2, ArrayView2};
+use search::LONG_VECTOR;
 use std::ops::Range;
 
 /// What [`lowest_levels`] is asked for.
@@ -136,13 +139,13 @@ pub fn lowest_levels<T: Scalar>(
         return dense::lowest_levels(operator, request, monitor);
     }
     if !dense::can_replace(operator.dimension(), request) {
-        return search::lowest_levels(operator, request, monitor);
+        return search::lowest_levels(operator, request, LONG_VECTOR, monitor);
     }
     let patience = LevelRequest {
         max_products: 2 * operator.dimension(),
         ..request.clone()
     };
-    let mut iterated = search::lowest_levels(operator, &patience, monitor)?;
+    let mut iterated = search::lowest_levels(operator, &patience, LONG_VECTOR, monitor)?;
     let certain = iterated.level_count != LevelCount::Unchecked;
     if iterated.status == Status::Interrupted || iterated.status == Status::Converged && certain {
         return Ok(iterated);

@@ -99,11 +99,13 @@ impl Probe {
         monitor: &mut Monitor<'_>,
     ) -> Result<Finding> {
         let room = operator.dimension() - self.known;
-        let mut polynomials: Vec<Christoffel> = self
-            .bounds
-            .iter()
-            .map(|&bound| Christoffel::new(bound))
-            .collect();
+        // a filter increases below its interval, so that the bounds on its images do the same
+        let image = |&bound: &f64| match run.filter() {
+            Some(filter) => filter.image(bound),
+            None => Some(bound),
+        };
+        let images = self.bounds.iter().map_while(image);
+        let mut polynomials: Vec<Christoffel> = images.map(Christoffel::new).collect();
         // rows after the known ones: two Lanczos vectors, taking turns, and the image
         let current_row = |turn: usize| self.known + turn % 2;
         self.begin(run, &mut generator)?;
@@ -111,20 +113,18 @@ impl Probe {
         let mut leak = Array2::<T>::zeros((self.known, 2));
         let mut before = 0.0;
         let mut failure_probability = 1.0;
-        for turn in 0..self.budget.min(room) {
+        for turn in 0..(self.budget / run.cost()).min(room) {
             let current = current_row(turn);
-            let (basis, mut image) = run.split(self.known + 2, 1);
-            match operator.apply(basis.slice(s![current..=current, ..]), image.view_mut()) {
+            match run.multiply(current..current + 1, self.known + 2) {
                 Err(Error::Interrupted) => return Ok(Finding::Interrupted),
                 other => other?,
             }
+            let (basis, mut image) = run.split(self.known + 2, 1);
             let (inside, left) = subtract_basis(basis, image.view_mut(), leak.view());
-            run.products += 1;
             let diagonal = inside[[current, 0]].re();
             let after = left.gram[[0, 0]].re().max(0.0).sqrt();
-            for polynomial in &mut polynomials {
+            for (polynomial, &bound) in polynomials.iter_mut().zip(&self.bounds) {
                 if !polynomial.advance(before, diagonal, after) {
-                    let bound = polynomial.energy;
                     return Ok(Finding::Missed { bound });
                 }
             }
@@ -139,7 +139,7 @@ impl Probe {
             if monitor(&progress).is_break() {
                 return Ok(Finding::Interrupted);
             }
-            if failure_probability <= ENOUGH || after <= 16.0 * f64::EPSILON * run.scale {
+            if failure_probability <= ENOUGH || after <= 16.0 * f64::EPSILON * run.norm() {
                 break;
             }
             self.take_turn(run, current_row(turn + 1), after);

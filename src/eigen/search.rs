@@ -24,13 +24,22 @@ const MOST_USUAL_BYTES: usize = 64 << 20;
 /// not see are found by the rounds that follow the level count.
 const BLOCK: usize = 1;
 
+/// Bytes of a vector from which on the operator is filtered: a basis of such vectors does not
+/// stay in cache, and keeping it orthogonal costs more than the products.
+pub(super) const LONG_VECTOR: usize = 1 << 20;
+/// Filters to be tried in vain: each is chosen from Ritz values that the last one has improved.
+const MOST_FILTERS: usize = 3;
+
 /// The lowest levels by iteration.
 pub(super) fn lowest_levels<T: Scalar>(
     operator: &dyn LinearOperator<T>,
     request: &LevelRequest<'_, T>,
+    long_vector: usize,
     monitor: &mut Monitor<'_>,
 ) -> Result<Levels<T>> {
     let mut search = Search::new(operator, request)?;
+    let products_dominate = search.row_bytes() < long_vector || operator.has_costly_products();
+    search.filters = if products_dominate { 0 } else { MOST_FILTERS };
     let generator = search.generator(0);
     search
         .run
@@ -78,15 +87,17 @@ pub(super) struct Search<'a, 'b, T: Scalar> {
     pub goal: Goal,
     pub run: BlockLanczos<'a, T>,
     /// Rows that fit in memory.
-    most_rows: usize,
+    pub most_rows: usize,
     /// Krylov rows for a few levels.
     usual_rows: usize,
     /// Restarts since they were last changed, in this round.
     restarts: usize,
+    /// Filters that may still be tried.
+    pub filters: usize,
     /// Rows in a block.
     width: usize,
     /// The locked levels.
-    locked: Vec<Level>,
+    pub locked: Vec<Level>,
     required: Option<Required>,
 }
 
@@ -125,6 +136,7 @@ impl<'a, 'b, T: Scalar> Search<'a, 'b, T> {
             most_rows,
             usual_rows: USUAL_ROWS,
             restarts: 0,
+            filters: 0,
             width,
             locked: Vec::new(),
             required: None,
@@ -178,7 +190,8 @@ impl<'a, 'b, T: Scalar> Search<'a, 'b, T> {
                 }
             }
             let width = self.run.residual_width();
-            if width == 0 || self.run.products + width > self.request.max_products {
+            if width == 0 || self.run.products + width * self.run.cost() > self.request.max_products
+            {
                 return Ok(Err(Status::NotConverged));
             }
             self.advance(wanted);
@@ -227,6 +240,9 @@ impl<'a, 'b, T: Scalar> Search<'a, 'b, T> {
             self.run.extend();
             return;
         }
+        if self.change_filter(wanted) {
+            return;
+        }
         self.restarts += 1;
         let bytes = 2 * self.usual_rows * self.operator.dimension() * size_of::<T>();
         let may_double = 2 * self.usual_rows <= MOST_USUAL_ROWS && bytes <= MOST_USUAL_BYTES;
@@ -241,6 +257,11 @@ impl<'a, 'b, T: Scalar> Search<'a, 'b, T> {
             .min(rows.saturating_sub(width))
             .min(self.run.size);
         self.run.restart(keep);
+    }
+
+    /// Bytes of a vector.
+    fn row_bytes(&self) -> usize {
+        self.operator.dimension().saturating_mul(size_of::<T>())
     }
 
     /// Moves what was found to the front of the basis.
@@ -284,9 +305,16 @@ impl<'a, 'b, T: Scalar> Search<'a, 'b, T> {
             .request
             .max_products
             .saturating_sub(self.run.products + found.found);
+        let bounds = match self.bounds_through_filter(found) {
+            Some(bounds) => bounds,
+            None => {
+                self.run.drop_filter();
+                self.bounds(found)
+            }
+        };
         let probe = Probe {
             known: found.levels.len(),
-            bounds: self.bounds(found),
+            bounds,
             budget: budget.min((self.run.products / 2).max(USUAL_ROWS)),
             levels: self.goal.levels,
         };
@@ -318,7 +346,7 @@ impl<'a, 'b, T: Scalar> Search<'a, 'b, T> {
     ///
     /// Known vectors that are not quite eigenvectors couple to the complement by no more than
     /// the norm c of their residuals: by Weyl's inequality levels move by c at most.
-    fn bounds(&self, found: &Found) -> Vec<f64> {
+    pub fn bounds(&self, found: &Found) -> Vec<f64> {
         let levels = &found.levels;
         let margin = 2.0 * self.goal.residual_tolerance(levels, self.run.scale);
         let square: f64 = levels.iter().map(|level| level.residual.powi(2)).sum();

@@ -608,3 +608,5 @@ fn random_spectra_with_multiplicities_in_little_memory() {
         check::<Complex64>(&operator, &solve(&operator, &request), &spectrum);
     }
 }
+
+mod filtered;

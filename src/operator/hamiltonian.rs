@@ -370,6 +370,14 @@ impl<T: Scalar> LinearOperator<T> for Hamiltonian<T> {
         Ok(())
     }
 
+    fn has_costly_products(&self) -> bool {
+        match self.representation() {
+            Ok(Representation::SpinHalf(operator)) => operator.has_hop_coupling(),
+            Ok(Representation::Modes(_)) => true,
+            _ => false,
+        }
+    }
+
     fn diagonal(&self) -> Array1<f64> {
         self.diagonal_elements()
             .unwrap_or_else(|_| Array1::zeros(0))

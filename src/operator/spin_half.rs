@@ -189,6 +189,11 @@ impl<T: Scalar> SpinHalfOperator<T> {
         })
     }
 
+    /// Whether opposite spins are coupled by more than their densities.
+    pub fn has_hop_coupling(&self) -> bool {
+        self.hops.is_some()
+    }
+
     fn shape(&self) -> (usize, usize) {
         (self.up.sparse.rows(), self.down.sparse.rows())
     }

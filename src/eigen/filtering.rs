@@ -1,0 +1,79 @@
+//! When to search through a filter, which one, and what it then takes to search for missed
+//! levels.
+
+use super::filter::Filter;
+use super::search::{Found, Search};
+use crate::scalar::Scalar;
+
+/// Steps that must be affordable for a filter to be worth while.
+const FEWEST_FILTERED_STEPS: usize = 8;
+/// Rows that a filter takes in memory.
+const FILTER_ROWS: usize = 2;
+
+impl<T: Scalar> Search<'_, '_, T> {
+    /// Begins to filter when the Ritz values of a full basis say how, or stops when the levels
+    /// wanted are not below the filtered interval; whether there was anything to change.
+    pub fn change_filter(&mut self, wanted: usize) -> bool {
+        let in_space = wanted - self.locked.len().min(wanted - 1);
+        if self.run.filter().is_some() {
+            let insufficient = self.levels().len() <= wanted;
+            if insufficient {
+                self.run.change_filter(None, in_space);
+            }
+            return insufficient;
+        }
+        let filter = self.choose_filter(in_space);
+        let chosen = filter.is_some();
+        if chosen {
+            self.filters -= 1;
+            self.most_rows -= FILTER_ROWS;
+            self.run.change_filter(filter, in_space + 1);
+        }
+        chosen
+    }
+
+    /// The filter that the Ritz values suggest for the lowest `wanted` levels, if it is of use.
+    fn choose_filter(&self, wanted: usize) -> Option<Filter<T>> {
+        let (values, residuals) = (&self.run.ritz.values, &self.run.ritz.residuals);
+        // with the most levels that may be found and locked
+        let levels = self.goal.levels + self.goal.most_extra;
+        let rows = self.run.rows() + levels + 2 * self.run.residual_width() + FILTER_ROWS;
+        let small = 8 * rows > self.operator.dimension();
+        if self.filters == 0 || small || rows > self.most_rows {
+            return None;
+        }
+        let (lower, highest) = (*values.get(wanted + 1)?, *values.get(wanted - 1)?);
+        // the residual norm is not quite sure to reach the end of the spectrum
+        let upper = values.last()? + residuals.last()?;
+        let filter = Filter::new((lower, upper), values[0], highest)?;
+        let left = self.request.max_products - self.run.products;
+        (left / filter.degree() >= FEWEST_FILTERED_STEPS).then_some(filter)
+    }
+
+    /// Energies at or below which a search of the complement through the filter must find no
+    /// level; none if they do not lie below its interval.
+    ///
+    /// Known vectors then couple to the complement by their residuals with the filter.
+    pub fn bounds_through_filter(&self, found: &Found) -> Option<Vec<f64>> {
+        let filter = self.run.filter()?;
+        let mut square = 0.0;
+        for level in &found.levels {
+            let slope = filter.slope(level.energy, filter.image(level.energy)?);
+            square += (slope * level.residual).powi(2);
+        }
+        let margin = 2.0 * f64::sqrt(square);
+        let shifted = |(k, bound)| {
+            let sign = if k == 0 && found.complete { 1.0 } else { -1.0 };
+            filter.energy(filter.image(bound)? + sign * margin)
+        };
+        let mut bounds: Vec<f64> = self
+            .bounds(found)
+            .into_iter()
+            .enumerate()
+            .map_while(shifted)
+            .collect();
+        let top = *bounds.first()?;
+        bounds.dedup_by(|next, _| *next <= top);
+        Some(bounds)
+    }
+}
