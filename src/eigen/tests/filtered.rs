@@ -1,5 +1,6 @@
 //! Searches through a polynomial filter, forced on small spaces; and the filter itself.
 
+use super::searches::Reflected;
 use super::*;
 
 /// With the filter wherever it suits.
