@@ -6,6 +6,6 @@ mod spin;
 mod split;
 mod transition;
 
-pub use one_body::{ensemble_density_matrix, state_density_matrices};
+pub use one_body::state_density_matrices;
 pub use spin::spin_squared;
 pub use transition::transition_density_matrices;

@@ -5,7 +5,7 @@ use crate::error::{Error, Result};
 use crate::operator::{HopTable, ModeSpace};
 use crate::scalar::Scalar;
 use crate::sector::Sector;
-use ndarray::{Array2, Array3, Array4, ArrayView1, ArrayView2, ArrayView4};
+use ndarray::{Array2, Array4, ArrayView1, ArrayView2};
 use rayon::prelude::*;
 
 /// Configurations that one task visits.
@@ -57,16 +57,6 @@ pub fn state_density_matrices<T: Scalar>(
 pub(super) fn shape_error(length: usize, (up, down): (usize, usize)) -> Error {
     let expected = format!("{up} x {down} components, the dimension of the sector");
     Error::argument("vectors", format!("{length} components"), expected)
-}
-
-/// sum_j w_j gamma_j, `(spins, d, d)`.
-pub fn ensemble_density_matrix<T: Scalar>(states: ArrayView4<'_, T>, weights: &[f64]) -> Array3<T> {
-    let (_, spins, d, _) = states.dim();
-    let mut total = Array3::zeros((spins, d, d));
-    for (gamma, &weight) in states.outer_iter().zip(weights) {
-        total.scaled_add(T::from_real(weight), &gamma);
-    }
-    total
 }
 
 /// Spinless particles: a hop from each configuration at a time.
@@ -189,6 +179,7 @@ mod tests {
     use super::*;
     use crate::operator::Hamiltonian;
     use approx::assert_abs_diff_eq;
+    use ndarray::Array3;
     use num_complex::Complex64;
     use rand::SeedableRng;
     use rand_chacha::ChaCha8Rng;
