@@ -336,3 +336,20 @@ def test_bundle_on_a_sector_without_dense_matrices(share: float) -> None:
     if share == 0.0:
         exact = states.energy - float(np.sum(h * np.swapaxes(gamma, 1, 2)))
         assert result.lower - 1e-10 <= exact <= result.upper + 1e-10
+
+
+@pytest.mark.parametrize("spacing", [1.4, 2.6])
+@pytest.mark.parametrize("weights", [[1.0], [0.6, 0.4], [0.5, 0.3, 0.2]])
+def test_round_trip_with_integrals(spacing: float, weights: list[float]) -> None:
+    """Legendre's round trip on a chain of four hydrogen atoms in a minimal basis."""
+    from hydrogen_integrals import hydrogen_integrals  # noqa: PLC0415
+
+    integrals = hydrogen_integrals(spacing * np.arange(4))
+    sector = fh.SpinHalfFermions(4, (2, 2))
+    repulsion = fh.Interaction(sector, two_body=integrals.two_body, order="mulliken")
+    e = fh.solve(fh.Hamiltonian(integrals.one_body, repulsion), weights)
+    functional = fh.UniversalFunctional(repulsion, weights, domain="spin-resolved")
+    value = functional.evaluate(e.density_matrix)
+    assert value.lower - 1e-12 <= e.interaction_energy <= value.upper + 1e-12
+    assert value.gap <= 1e-8
+    assert value.ensemble.verify(e.density_matrix)

@@ -130,3 +130,16 @@ def test_levels_beyond_the_list() -> None:
     assert W.new_at(4) == ()
     assert {one.first_level for one in W.inequalities()} == {1, 2, 3}
     assert sum((W.new_at(r) for r in (1, 2, 3)), ()) == W.inequalities()
+
+
+def test_many_weights_give_a_certified_distance() -> None:
+    """20,000 weights and a smooth point: certified, if not to rounding level."""
+    modes, r = 60, 20_000
+    weights = np.exp(-2.0 * np.arange(r) / r)
+    polytope = fh.ExclusionPolytope(fh.Fermions(modes, 30), weights / weights.sum())
+    n = 1.0 / (1.0 + np.exp((np.arange(modes) - 29.5) / 0.4))
+    projection = polytope.project(occupations=n)
+    assert 0.0 <= projection.distance - projection.distance_lower <= 1e-9
+    assert projection.gap <= 2.5e-11
+    assert projection.distance > 1e-3
+    assert_allclose(projection.occupations.sum(), 30.0, rtol=0.0, atol=1e-9)
