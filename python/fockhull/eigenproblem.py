@@ -106,6 +106,34 @@ def solve(
     >>> e.energies
     array([-0.8284271, 0. ])
     """
+    result = solve_silently(
+        hamiltonian,
+        weights,
+        levels=levels,
+        tol=tol,
+        start=start,
+        seed=seed,
+        progress=progress,
+        max_products=max_products,
+    )
+    return result.symmetrized() if symmetrize else warned(result)
+
+
+def solve_silently(
+    hamiltonian: Hamiltonian,
+    weights: npt.ArrayLike | None = None,
+    *,
+    levels: int | None = None,
+    tol: float = 1e-10,
+    start: npt.ArrayLike | Ensemble | None = None,
+    seed: int = 0,
+    progress: bool | Callable[[SolveProgress], object] | None = None,
+    max_products: int | None = None,
+) -> Ensemble:
+    """Do what `solve` does, without a word about cut multiplets.
+
+    Filters of warnings belong to the whole process: no thread may change them to be silent.
+    """
     if not isinstance(hamiltonian, Hamiltonian):
         raise ArgumentTypeError("hamiltonian", type(hamiltonian).__name__, "a Hamiltonian")
     if (weights is None) == (levels is None):
@@ -143,7 +171,7 @@ def solve(
             "exception's `result`; loosen tol, or start from the partial result",
             result,
         )
-    return result.symmetrized() if symmetrize else warned(result)
+    return result
 
 
 def _levels(found: _core.Levels, tolerance: float, seed: int) -> Levels:

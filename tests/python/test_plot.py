@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import warnings
 from collections.abc import Callable, Iterator
 from itertools import permutations
 from typing import Any
@@ -46,9 +45,7 @@ def solved(repulsion: float) -> fh.Ensemble:
     """Three sites in a ring: degenerate levels at every repulsion."""
     ring = -(np.ones((3, 3)) - np.eye(3))
     interaction = fh.Interaction(S, density_density=repulsion * np.eye(3))
-    with warnings.catch_warnings():
-        warnings.simplefilter("ignore", fh.CutMultipletWarning)
-        return fh.solve(fh.Hamiltonian(ring, interaction), [0.6, 0.4])
+    return fh.solve(fh.Hamiltonian(ring, interaction), [0.6, 0.4], symmetrize=True)
 
 
 U = np.array([0.0, 1.0, 2.5, 4.0])

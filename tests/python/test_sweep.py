@@ -4,6 +4,7 @@
 import functools
 import threading
 import time
+import warnings
 from concurrent.futures import Executor, Future, ThreadPoolExecutor
 
 import numpy as np
@@ -12,6 +13,7 @@ import xarray as xr
 from hypothesis import given
 from hypothesis import strategies as st
 
+import fockhull as fh
 from fockhull.errors import ArgumentError, ArgumentTypeError
 from fockhull.sweeps import SweepWarning, points
 from fockhull.sweeps import sweep as noisy_sweep
@@ -186,6 +188,23 @@ def test_warm_starts_run_along_the_axis_and_skip_failures():
         result = sweep(task, {"x": [0, 1, 2, 3], "y": [0, 1]}, warm_start="x")
     np.testing.assert_array_equal(result.total.sel(y=1), [1, 2, 3, 4])
     np.testing.assert_array_equal(result.total.sel(y=0), [1, np.nan, 1, 2])
+
+
+def test_functionals_in_threads_never_touch_the_filters_of_warnings():
+    repulsion = fh.Interaction(fh.SpinHalfFermions(3, (1, 1)), density_density=4.0 * np.eye(3))
+    functional = fh.UniversalFunctional(repulsion, [0.6, 0.4], domain="spin-summed")
+    seen = []
+
+    def value(x):
+        gamma = np.diag([2 / 3 - x, 2 / 3, 2 / 3 + x])
+        found = functional.evaluate(gamma, tol=1e-6).value
+        seen.extend(f for f in warnings.filters if f[2] is fh.CutMultipletWarning)
+        return {"value": found}
+
+    with ThreadPoolExecutor(8) as executor:
+        result = sweep(value, {"x": np.linspace(0.0, 0.1, 16)}, executor=executor)
+    assert not seen
+    assert result.finished.all()
 
 
 def returns(value):

@@ -2,16 +2,14 @@
 
 from __future__ import annotations
 
-import warnings
 from dataclasses import dataclass
 from functools import cached_property
 
 import numpy as np
 import numpy.typing as npt
 
-from fockhull.eigenproblem import solve
+from fockhull.eigenproblem import solve_silently
 from fockhull.ensemble import Ensemble
-from fockhull.errors import CutMultipletWarning
 from fockhull.functionals._potentials import PotentialSpace
 from fockhull.functionals._smoothed import Block
 from fockhull.hamiltonian import Hamiltonian
@@ -71,7 +69,7 @@ class Problem:
     def solved(self, potential: ScalarArray, start: Ensemble | None = None) -> Ensemble:
         """Solve for the states of h + W."""
         h = potential if self.one_body is None else potential + self.one_body
-        return _solved(Hamiltonian(h, self.interaction), self.weights, start)
+        return solve_silently(Hamiltonian(h, self.interaction), self.weights, start=start)
 
     @cached_property
     def bare(self) -> Hamiltonian:
@@ -86,13 +84,13 @@ class Problem:
     @cached_property
     def lowest(self) -> float:
         """A lower bound of Tr(Gamma W) over all ensembles."""
-        states = _solved(self.bare, self.weights)
+        states = solve_silently(self.bare, self.weights)
         return states.energy - states.energy_error_bound
 
     @cached_property
     def highest(self) -> float:
         """An upper bound of Tr(Gamma W) over all ensembles."""
-        states = _solved(Hamiltonian(-self._fixed, -self.interaction), self.weights)
+        states = solve_silently(Hamiltonian(-self._fixed, -self.interaction), self.weights)
         return states.energy_error_bound - states.energy
 
     @cached_property
@@ -116,12 +114,3 @@ class Problem:
         return Block(
             self.bare.to_scipy().toarray(), operators.reshape(-1, dimension, dimension), weights
         )
-
-
-def _solved(
-    hamiltonian: Hamiltonian, weights: RealArray, start: Ensemble | None = None
-) -> Ensemble:
-    with warnings.catch_warnings():
-        # at a maximiser cut multiplets are the rule
-        warnings.simplefilter("ignore", CutMultipletWarning)
-        return solve(hamiltonian, weights, start=start)

@@ -124,6 +124,9 @@ def sweep(
     threads run to their end before Python exits. While points are missing,
     xarray reads integers and booleans as floats (NaN where missing).
 
+    Python's warning filters are shared by all threads, so a task should avoid
+    a warning (``symmetrize=True`` of `solve`) rather than catch it.
+
     Examples
     --------
     >>> import numpy as np
