@@ -39,6 +39,13 @@ pub trait Scalar:
     fn abs_sqr(self) -> f64;
     /// Absolute value.
     fn abs(self) -> f64;
+    /// The numbers themselves, if this type is real: a way to instructions for real numbers.
+    fn as_reals(numbers: &[Self]) -> Option<&[f64]>;
+    /// The same for numbers to be written.
+    fn as_reals_mut(numbers: &mut [Self]) -> Option<&mut [f64]>;
+    /// self + a b, rounded once for each real product. Only for code that is compiled for the
+    /// processor found at run time: elsewhere it is a slow call.
+    fn plus_product(self, a: Self, b: Self) -> Self;
     /// A standard normal random number (independent real and imaginary parts).
     fn random_normal<R: Rng>(generator: &mut R) -> Self;
 
@@ -67,6 +74,16 @@ impl Scalar for f64 {
     }
     fn to_complex(self) -> Complex64 {
         Complex64::new(self, 0.0)
+    }
+    fn as_reals(numbers: &[Self]) -> Option<&[f64]> {
+        Some(numbers)
+    }
+    fn as_reals_mut(numbers: &mut [Self]) -> Option<&mut [f64]> {
+        Some(numbers)
+    }
+    #[inline(always)]
+    fn plus_product(self, a: Self, b: Self) -> Self {
+        a.mul_add(b, self)
     }
     fn re(self) -> f64 {
         self
@@ -99,6 +116,18 @@ impl Scalar for Complex64 {
     }
     fn to_complex(self) -> Complex64 {
         self
+    }
+    fn as_reals(_: &[Self]) -> Option<&[f64]> {
+        None
+    }
+    fn as_reals_mut(_: &mut [Self]) -> Option<&mut [f64]> {
+        None
+    }
+    #[inline(always)]
+    fn plus_product(self, a: Self, b: Self) -> Self {
+        let re = (-a.im).mul_add(b.im, a.re.mul_add(b.re, self.re));
+        let im = a.im.mul_add(b.re, a.re.mul_add(b.im, self.im));
+        Complex64::new(re, im)
     }
     fn re(self) -> f64 {
         self.re

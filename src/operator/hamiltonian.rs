@@ -358,15 +358,19 @@ impl<T: Scalar> LinearOperator<T> for Hamiltonian<T> {
 
     fn apply(&self, block: ArrayView2<'_, T>, mut out: ArrayViewMut2<'_, T>) -> Result<()> {
         debug_assert_eq!(block.dim(), out.dim());
-        match self.representation()? {
-            Representation::Stored(matrix) => matrix.apply(block, out.view_mut()),
-            Representation::Modes(operator) => operator.apply(block, out.view_mut()),
-            Representation::Split(operator) => operator.apply(block, out.view_mut()),
-            Representation::SpinHalf(operator) => operator.apply(block, out.view_mut()),
-        }
-        if self.constant != 0.0 {
-            out.scaled_add(T::from_real(self.constant), &block);
-        }
+        let representation = self.representation()?;
+        // a thread is woken once for the product, not once for each pass
+        rayon::scope(|_| {
+            match representation {
+                Representation::Stored(matrix) => matrix.apply(block, out.view_mut()),
+                Representation::Modes(operator) => operator.apply(block, out.view_mut()),
+                Representation::Split(operator) => operator.apply(block, out.view_mut()),
+                Representation::SpinHalf(operator) => operator.apply(block, out.view_mut()),
+            }
+            if self.constant != 0.0 {
+                out.scaled_add(T::from_real(self.constant), &block);
+            }
+        });
         Ok(())
     }
 

@@ -4,7 +4,9 @@
 //! order for one kind of particles; products are done by a stored matrix or row by row for
 //! spinless particles, and through the product structure for spin-1/2.
 
+mod buffers;
 mod coupling;
+mod density_coupling;
 mod hamiltonian;
 mod hops;
 mod interaction;
@@ -13,9 +15,11 @@ mod spaces;
 mod spin_half;
 mod split;
 mod stored;
+mod strings;
 mod symmetry;
 mod terms;
 mod tile;
+mod transpose;
 mod walker;
 
 pub use hamiltonian::{Hamiltonian, MemoryEstimate};

@@ -1,30 +1,24 @@
 //! Spin-1/2 fermions at fixed (up, down): H = H_up x 1 + 1 x H_down + coupling.
 //!
-//! A vector is a matrix with a row for each up configuration. The down part and the
-//! density-density coupling work on a tile of rows at a time, transposed so that neighbouring
-//! numbers belong to different rows; the up part works on tiles of columns. Each reads the
-//! vector once, and a tile stays in cache.
+//! A vector is a matrix with a row for each up configuration.
 
+use super::buffers::Buffers;
 use super::coupling::HopCoupling;
+use super::density_coupling::DensityCoupling;
 use super::interaction::Interaction;
 use super::modes::ModeOperator;
-use super::stored::{RowSink, SparseMatrix};
+use super::stored::RowSink;
+use super::strings::StringMatrix;
 use super::terms::ModeTerms;
-use super::tile::{Lane, multiply_tile, transpose_in, transpose_out, with_tile_width};
+use super::tile::with_tile_width;
 use super::walker::ModeSpace;
 use crate::dense::{Conjugate, Threads, multiply};
 use crate::error::Result;
 use crate::memory;
 use crate::scalar::Scalar;
-use ndarray::{Array1, Array2, ArrayView2, ArrayView3, ArrayViewMut2, Axis, s};
-use pulp::NullaryFnOnce;
+use ndarray::{Array1, ArrayView2, ArrayView3, ArrayViewMut2, Axis};
 use rayon::prelude::*;
 use std::ops::Range;
-
-/// Above this fraction of non-zero elements a one-spin matrix is multiplied as a dense one,
-const DENSE_FILL: f64 = 0.1;
-/// unless it has more rows than this.
-const DENSE_ROWS: usize = 4096;
 
 /// H on the product of up and down configurations.
 #[derive(Debug, Clone)]
@@ -33,121 +27,7 @@ pub struct SpinHalfOperator<T> {
     down: StringMatrix<T>,
     density: Option<DensityCoupling>,
     hops: Option<HopCoupling<T>>,
-}
-
-/// The part of H that acts on one spin.
-#[derive(Debug, Clone)]
-struct StringMatrix<T> {
-    sparse: SparseMatrix<T>,
-    /// The same matrix, where a dense product is faster.
-    dense: Option<Array2<T>>,
-}
-
-/// sum_pq V_pq n(up)_p n(down)_q.
-#[derive(Debug, Clone)]
-struct DensityCoupling {
-    matrix: Array2<f64>,
-    up: Occupied,
-    down: Occupied,
-}
-
-/// Occupied modes of every configuration.
-#[derive(Debug, Clone)]
-struct Occupied {
-    particles: usize,
-    modes: Vec<u32>,
-}
-
-impl Occupied {
-    fn new(space: &ModeSpace) -> Result<Self> {
-        let mut modes = Vec::with_capacity(space.dimension() * space.particles());
-        let mut walker = space.walker(0)?;
-        for _ in 0..space.dimension() {
-            modes.extend_from_slice(walker.modes());
-            walker.advance();
-        }
-        Ok(Occupied {
-            particles: space.particles(),
-            modes,
-        })
-    }
-
-    #[inline]
-    fn of(&self, configuration: usize) -> &[u32] {
-        &self.modes[configuration * self.particles..(configuration + 1) * self.particles]
-    }
-}
-
-impl DensityCoupling {
-    #[inline]
-    fn element(&self, up: usize, down: usize) -> f64 {
-        let down = self.down.of(down);
-        let row = |p: u32| self.matrix.row(p as usize);
-        self.up
-            .of(up)
-            .iter()
-            .map(|&p| down.iter().map(|&q| row(p)[q as usize]).sum::<f64>())
-            .sum()
-    }
-
-    /// What a down particle in each mode feels from the up configurations of a tile.
-    fn potentials<const W: usize>(&self, first: usize, rows: usize) -> Vec<[f64; W]> {
-        let mut potentials = vec![[0.0; W]; self.matrix.nrows()];
-        for offset in 0..rows {
-            for &p in self.up.of(first + offset) {
-                for (potential, &v) in potentials.iter_mut().zip(self.matrix.row(p as usize)) {
-                    potential[offset] += v;
-                }
-            }
-        }
-        potentials
-    }
-
-    /// The coupling of one down configuration with the up configurations of a tile.
-    #[inline(always)]
-    fn act<T: Scalar, const W: usize>(
-        &self,
-        potentials: &[[f64; W]],
-        down: usize,
-        x: &[T; W],
-    ) -> [T; W] {
-        let mut total = [0.0; W];
-        for &q in self.down.of(down) {
-            let potential = &potentials[q as usize];
-            for k in 0..W {
-                total[k] += potential[k];
-            }
-        }
-        let mut result = [T::zero(); W];
-        for k in 0..W {
-            result[k] = x[k] * total[k];
-        }
-        result
-    }
-}
-
-impl<T: Scalar> StringMatrix<T> {
-    fn new(operator: &ModeOperator<T>) -> Result<Self> {
-        let element = (size_of::<T>() + size_of::<u32>()) as u128;
-        memory::require(
-            "the part of the Hamiltonian that acts on one spin",
-            operator.estimated_elements()? * element,
-        )?;
-        let sparse = operator.to_sparse().without_zeros();
-        let n = sparse.rows();
-        let worthwhile = n > 1 && n <= DENSE_ROWS && sparse.fill() > DENSE_FILL;
-        let dense = worthwhile.then(|| {
-            let mut dense = Array2::zeros((n, n));
-            for i in 0..n {
-                let (columns, values) = sparse.row(i);
-                for (&j, &value) in columns.iter().zip(values) {
-                    dense[[i, j as usize]] = value;
-                }
-            }
-            dense
-        });
-        Ok(StringMatrix { sparse, dense })
-    }
+    buffers: Buffers<T>,
 }
 
 impl<T: Scalar> SpinHalfOperator<T> {
@@ -166,11 +46,7 @@ impl<T: Scalar> SpinHalfOperator<T> {
             StringMatrix::new(&ModeOperator::new(space.clone(), terms))
         };
         let density = match interaction.and_then(Interaction::density_density) {
-            Some(matrix) => Some(DensityCoupling {
-                matrix: matrix.clone(),
-                up: Occupied::new(&up)?,
-                down: Occupied::new(&down)?,
-            }),
+            Some(matrix) => Some(DensityCoupling::new(matrix, &up, &down)?),
             None => None,
         };
         let needs_hops = |w: &&Interaction<T>| w.tensor().is_some() || w.has_entries();
@@ -186,6 +62,7 @@ impl<T: Scalar> SpinHalfOperator<T> {
             down: part(1, &down)?,
             density,
             hops,
+            buffers: Buffers::default(),
         })
     }
 
@@ -208,81 +85,29 @@ impl<T: Scalar> SpinHalfOperator<T> {
             let (Some(vector), Some(result)) = (vector.to_slice(), result.as_slice_mut()) else {
                 continue;
             };
-            with_tile_width!(up, W => self.apply_down::<W>(vector, result));
-            if let (Ok(vector), Ok(result)) = (
+            let (coupling, buffers) = (self.density.as_ref(), &self.buffers);
+            with_tile_width!(up, W => {
+                self.down.apply_to_rows::<W>(coupling, vector, result, buffers)
+            });
+            let (Ok(strings), Ok(mut result)) = (
                 ArrayView2::from_shape((up, down), vector),
                 ArrayViewMut2::from_shape((up, down), result),
-            ) {
-                self.add_dense_down(vector, result);
+            ) else {
+                continue;
+            };
+            if let Some(dense) = &self.down.dense {
+                add_product((strings, dense.t()), result.view_mut());
             }
-            if let (Ok(vector), Ok(result)) = (
-                ArrayView2::from_shape((up, down), vector),
-                ArrayViewMut2::from_shape((up, down), result),
-            ) {
-                match &self.up.dense {
-                    Some(dense) => add_product((dense.view(), vector), result),
-                    None => with_tile_width!(down, W => self.add_up::<W>(vector, result)),
-                }
+            match &self.up.dense {
+                Some(dense) => add_product((dense.view(), strings), result),
+                None => with_tile_width!(down, W => {
+                    self.up.add_to_columns::<W>(vector, result, buffers)
+                }),
             }
         }
         if let Some(hops) = &self.hops {
             hops.add_to(block, out, down);
         }
-    }
-
-    /// The sparse down part and the density coupling, a tile of rows at a time, transposed.
-    fn apply_down<const W: usize>(&self, vector: &[T], result: &mut [T]) {
-        let width = self.down.sparse.rows();
-        let arch = pulp::Arch::new();
-        result
-            .par_chunks_mut(W * width)
-            .zip(vector.par_chunks(W * width))
-            .enumerate()
-            .for_each_init(
-                || (vec![[T::zero(); W]; width], vec![[T::zero(); W]; width]),
-                |(source, target), (tile, (result, vector))| {
-                    let lanes = vector.chunks(width).enumerate();
-                    let lanes: Vec<Lane<'_, T>> = lanes.map(|(k, row)| (k, 1.0, row)).collect();
-                    let coupling = self.density.as_ref();
-                    arch.dispatch(DownTile::<T, W> {
-                        matrix: self.down.dense.is_none().then_some(&self.down.sparse),
-                        coupling: coupling.map(|c| (c, c.potentials(tile * W, lanes.len()))),
-                        lanes,
-                        rows: result.chunks_mut(width).collect(),
-                        source,
-                        target,
-                    });
-                },
-            );
-    }
-
-    fn add_dense_down(&self, vector: ArrayView2<'_, T>, result: ArrayViewMut2<'_, T>) {
-        if let Some(dense) = &self.down.dense {
-            add_product((vector, dense.t()), result);
-        }
-    }
-
-    /// The sparse up part, a tile of columns at a time.
-    fn add_up<const W: usize>(&self, vector: ArrayView2<'_, T>, mut result: ArrayViewMut2<'_, T>) {
-        let height = self.up.sparse.rows();
-        let arch = pulp::Arch::new();
-        result
-            .axis_chunks_iter_mut(Axis(1), W)
-            .into_par_iter()
-            .enumerate()
-            .for_each_init(
-                || (vec![[T::zero(); W]; height], vec![[T::zero(); W]; height]),
-                |(source, target), (tile, result)| {
-                    let columns = tile * W..tile * W + result.ncols();
-                    arch.dispatch(UpTile::<T, W> {
-                        matrix: &self.up.sparse,
-                        vector: vector.slice(s![.., columns]),
-                        result,
-                        source,
-                        target,
-                    });
-                },
-            );
     }
 
     /// Pushes the rows of a range.
@@ -330,96 +155,6 @@ impl<T: Scalar> SpinHalfOperator<T> {
             .map(element)
             .collect::<Vec<_>>()
             .into()
-    }
-}
-
-/// A tile of rows: down part and density coupling. (A struct, not a closure: only then the work
-/// is compiled for the instruction set found at run time.)
-struct DownTile<'a, T, const W: usize> {
-    matrix: Option<&'a SparseMatrix<T>>,
-    coupling: Option<(&'a DensityCoupling, Vec<[f64; W]>)>,
-    lanes: Vec<Lane<'a, T>>,
-    rows: Vec<&'a mut [T]>,
-    source: &'a mut [[T; W]],
-    target: &'a mut [[T; W]],
-}
-
-impl<T: Scalar, const W: usize> NullaryFnOnce for DownTile<'_, T, W> {
-    type Output = ();
-
-    #[inline(always)]
-    fn call(mut self) {
-        transpose_in(&self.lanes, self.source);
-        let coupling = &self.coupling;
-        multiply_tile(
-            self.matrix,
-            self.source,
-            self.target,
-            #[inline(always)]
-            |i, x| match coupling {
-                Some((coupling, potentials)) => coupling.act(potentials, i, x),
-                None => [T::zero(); W],
-            },
-        );
-        transpose_out(self.target, &mut self.rows);
-    }
-}
-
-/// A tile of columns: up part.
-struct UpTile<'a, T, const W: usize> {
-    matrix: &'a SparseMatrix<T>,
-    vector: ArrayView2<'a, T>,
-    result: ArrayViewMut2<'a, T>,
-    source: &'a mut [[T; W]],
-    target: &'a mut [[T; W]],
-}
-
-impl<T: Scalar, const W: usize> NullaryFnOnce for UpTile<'_, T, W> {
-    type Output = ();
-
-    #[inline(always)]
-    fn call(mut self) {
-        for (row, packed) in self.vector.rows().into_iter().zip(self.source.iter_mut()) {
-            if let Some(row) = row.to_slice() {
-                pack_lane(row, packed);
-            }
-        }
-        multiply_tile(
-            Some(self.matrix),
-            self.source,
-            self.target,
-            #[inline(always)]
-            |_, _| [T::zero(); W],
-        );
-        for (mut row, sums) in self.result.rows_mut().into_iter().zip(&*self.target) {
-            if let Some(row) = row.as_slice_mut() {
-                add_lane(row, sums);
-            }
-        }
-    }
-}
-
-/// packed = row, as far as the row reaches
-#[inline(always)]
-fn pack_lane<T: Scalar, const W: usize>(row: &[T], packed: &mut [T; W]) {
-    if let Ok(row) = <&[T; W]>::try_from(row) {
-        *packed = *row;
-    } else {
-        packed[..row.len()].copy_from_slice(row);
-    }
-}
-
-/// row += sums, as far as the row reaches
-#[inline(always)]
-fn add_lane<T: Scalar, const W: usize>(row: &mut [T], sums: &[T; W]) {
-    if let Ok(row) = <&mut [T; W]>::try_from(&mut *row) {
-        for k in 0..W {
-            row[k] += sums[k];
-        }
-    } else {
-        for (total, &sum) in row.iter_mut().zip(sums) {
-            *total += sum;
-        }
     }
 }
 

@@ -11,9 +11,8 @@ use super::modes::ModeOperator;
 use super::spaces::HalfSpaces;
 use super::stored::SparseMatrix;
 use super::terms::ModeTerms;
-use super::tile::{
-    Lane, WIDE, add_tile_product, multiply_tile, transpose_in, transpose_out, with_tile_width,
-};
+use super::tile::{WIDE, add_tile_product, multiply_tile, with_tile_width};
+use super::transpose::{Lane, transpose_in, transpose_out};
 use super::walker::ModeSpace;
 use crate::error::Result;
 use crate::scalar::Scalar;

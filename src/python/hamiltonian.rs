@@ -74,12 +74,11 @@ fn apply_rows<T: Scalar>(
 /// Refuses NaN and infinity, in parallel: it must cost little beside the product.
 fn check_finite<T: Scalar>(block: ArrayView2<'_, T>) -> Result<()> {
     const PART: usize = 1 << 15;
-    let finite = block.rows().into_iter().all(|row| {
-        let parts: Vec<_> = row.axis_chunks_iter(Axis(0), PART).collect();
-        parts
-            .into_par_iter()
-            .all(|part| part.iter().fold(true, |all, x| all & x.is_finite()))
-    });
+    let all_finite = |part: &[T]| part.iter().fold(true, |all, x| all & x.is_finite());
+    let finite = match block.to_slice() {
+        Some(numbers) => numbers.par_chunks(PART).all(all_finite),
+        None => block.iter().all(|x| x.is_finite()),
+    };
     if finite {
         Ok(())
     } else {

@@ -1,0 +1,254 @@
+//! Between vectors and tiles: a tile holds the same component of several vectors side by side.
+
+use crate::scalar::Scalar;
+
+/// Columns that are transposed together: a cache line of each row.
+pub const LINE: usize = 8;
+
+/// A vector of a tile: its place, a factor, and its components.
+pub type Lane<'a, T> = (usize, f64, &'a [T]);
+
+/// tile\[c\]\[place\] = factor x vector\[c\] for each lane; other places stay as they are.
+#[inline(always)]
+pub fn transpose_in<T: Scalar, const W: usize>(lanes: &[Lane<'_, T>], tile: &mut [[T; W]]) {
+    let first = lanes.first().map_or(0, |lane| lane.0);
+    let neighbours = lanes
+        .iter()
+        .zip(first..)
+        .all(|(lane, place)| lane.0 == place);
+    for (block, line) in tile.chunks_mut(LINE).enumerate() {
+        for group in lanes.chunks(SIDE) {
+            if !(neighbours && registers::transpose_in(group, block * LINE, line)) {
+                fill_lanes(group, block * LINE, line);
+            }
+        }
+    }
+}
+
+#[inline(always)]
+fn fill_lanes<T: Scalar, const W: usize>(lanes: &[Lane<'_, T>], start: usize, line: &mut [[T; W]]) {
+    for &(place, factor, vector) in lanes {
+        let vector = &vector[start..start + line.len()];
+        for (components, &x) in line.iter_mut().zip(vector) {
+            components[place] = x * factor;
+        }
+    }
+}
+
+/// vectors\[place\]\[c\] = tile\[c\]\[place\]
+#[inline(always)]
+pub fn transpose_out<T: Scalar, const W: usize>(tile: &[[T; W]], vectors: &mut [&mut [T]]) {
+    for (block, line) in tile.chunks(LINE).enumerate() {
+        transpose_line_out(line, vectors, block * LINE);
+    }
+}
+
+/// vectors\[place\]\[start + c\] = line\[c\]\[place\], at most [`LINE`] columns
+#[inline(always)]
+pub fn transpose_line_out<T: Scalar, const W: usize>(
+    line: &[[T; W]],
+    vectors: &mut [&mut [T]],
+    start: usize,
+) {
+    for (group, vectors) in vectors.chunks_mut(SIDE).enumerate() {
+        let first = group * SIDE;
+        if !registers::transpose_out(line, (first, start), vectors) {
+            for (vector, place) in vectors.iter_mut().zip(first..) {
+                for (x, components) in vector[start..].iter_mut().zip(line) {
+                    *x = components[place];
+                }
+            }
+        }
+    }
+}
+
+/// Side of the squares that are transposed in registers.
+const SIDE: usize = 4;
+
+/// Transposition of real numbers in registers; the compiler does not find it by itself.
+#[cfg(target_arch = "x86_64")]
+mod registers {
+    use super::{LINE, Lane, SIDE};
+    use crate::scalar::Scalar;
+    use pulp::x86::V3;
+    use std::arch::x86_64::__m256d;
+
+    const LOWER_HALVES: i32 = 0x20;
+    const UPPER_HALVES: i32 = 0x31;
+
+    #[inline(always)]
+    fn transposed(simd: V3, [a, b, c, d]: [__m256d; SIDE]) -> [__m256d; SIDE] {
+        let simd = simd.avx;
+        let even = [simd._mm256_unpacklo_pd(a, b), simd._mm256_unpacklo_pd(c, d)];
+        let odd = [simd._mm256_unpackhi_pd(a, b), simd._mm256_unpackhi_pd(c, d)];
+        [
+            simd._mm256_permute2f128_pd::<LOWER_HALVES>(even[0], even[1]),
+            simd._mm256_permute2f128_pd::<LOWER_HALVES>(odd[0], odd[1]),
+            simd._mm256_permute2f128_pd::<UPPER_HALVES>(even[0], even[1]),
+            simd._mm256_permute2f128_pd::<UPPER_HALVES>(odd[0], odd[1]),
+        ]
+    }
+
+    /// Fills neighbouring places of a whole line, or returns false.
+    #[inline(always)]
+    pub fn transpose_in<T: Scalar, const W: usize>(
+        lanes: &[Lane<'_, T>],
+        start: usize,
+        line: &mut [[T; W]],
+    ) -> bool {
+        let (Some(simd), [a, b, c, d]) = (V3::try_new(), lanes) else {
+            return false;
+        };
+        let first = a.0;
+        let (Some(line), Some(va), Some(vb), Some(vc), Some(vd)) = (
+            T::as_reals_mut(line.as_flattened_mut()),
+            real_part(a.2, start),
+            real_part(b.2, start),
+            real_part(c.2, start),
+            real_part(d.2, start),
+        ) else {
+            return false;
+        };
+        let Ok(line) = <&mut [[f64; W]; LINE]>::try_from(line.as_chunks_mut::<W>().0) else {
+            return false;
+        };
+        if first + SIDE > W {
+            return false;
+        }
+        for half in 0..LINE / SIDE {
+            let row = |numbers: &[f64; LINE], factor: f64| {
+                let numbers = pulp::cast(numbers.as_chunks::<SIDE>().0[half]);
+                simd.avx
+                    ._mm256_mul_pd(numbers, simd.avx._mm256_set1_pd(factor))
+            };
+            let columns = transposed(
+                simd,
+                [row(va, a.1), row(vb, b.1), row(vc, c.1), row(vd, d.1)],
+            );
+            for k in 0..SIDE {
+                let components = &mut line[half * SIDE + k];
+                if let Some(places) = components[first..].first_chunk_mut::<SIDE>() {
+                    *places = pulp::cast(columns[k]);
+                }
+            }
+        }
+        true
+    }
+
+    /// Writes a whole line of four vectors, or returns false.
+    #[inline(always)]
+    pub fn transpose_out<T: Scalar, const W: usize>(
+        line: &[[T; W]],
+        (first, start): (usize, usize),
+        vectors: &mut [&mut [T]],
+    ) -> bool {
+        let (Some(simd), [a, b, c, d]) = (V3::try_new(), vectors) else {
+            return false;
+        };
+        let Some(line) = T::as_reals(line.as_flattened()) else {
+            return false;
+        };
+        let Ok(line) = <&[[f64; W]; LINE]>::try_from(line.as_chunks::<W>().0) else {
+            return false;
+        };
+        if first + SIDE > W {
+            return false;
+        }
+        let (Some(a), Some(b), Some(c), Some(d)) = (
+            real_part_mut(a, start),
+            real_part_mut(b, start),
+            real_part_mut(c, start),
+            real_part_mut(d, start),
+        ) else {
+            return false;
+        };
+        for half in 0..LINE / SIDE {
+            let row = |k: usize| {
+                let places = line[half * SIDE + k][first..].first_chunk::<SIDE>();
+                pulp::cast(places.copied().unwrap_or_default())
+            };
+            let columns = transposed(simd, [row(0), row(1), row(2), row(3)]);
+            a.as_chunks_mut::<SIDE>().0[half] = pulp::cast(columns[0]);
+            b.as_chunks_mut::<SIDE>().0[half] = pulp::cast(columns[1]);
+            c.as_chunks_mut::<SIDE>().0[half] = pulp::cast(columns[2]);
+            d.as_chunks_mut::<SIDE>().0[half] = pulp::cast(columns[3]);
+        }
+        true
+    }
+
+    #[inline(always)]
+    fn real_part<T: Scalar>(vector: &[T], start: usize) -> Option<&[f64; LINE]> {
+        T::as_reals(vector)?[start..].first_chunk()
+    }
+
+    #[inline(always)]
+    fn real_part_mut<T: Scalar>(vector: &mut [T], start: usize) -> Option<&mut [f64; LINE]> {
+        T::as_reals_mut(vector)?[start..].first_chunk_mut()
+    }
+}
+
+/// No registers of four numbers are known here.
+#[cfg(not(target_arch = "x86_64"))]
+mod registers {
+    use super::Lane;
+
+    pub fn transpose_in<T, const W: usize>(_: &[Lane<'_, T>], _: usize, _: &mut [[T; W]]) -> bool {
+        false
+    }
+
+    pub fn transpose_out<T, const W: usize>(
+        _: &[[T; W]],
+        _: (usize, usize),
+        _: &mut [&mut [T]],
+    ) -> bool {
+        false
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+    use num_complex::Complex64;
+
+    const WIDTH: usize = 32;
+
+    fn back_and_forth<T: Scalar>(height: usize, length: usize, number: impl Fn(usize) -> T) {
+        let numbers: Vec<T> = (0..height * length).map(number).collect();
+        let lanes: Vec<Lane<'_, T>> = numbers
+            .chunks(length)
+            .enumerate()
+            .map(|(place, row)| (place, 2.0, row))
+            .collect();
+        let mut tile = vec![[T::zero(); WIDTH]; length];
+        transpose_in(&lanes, &mut tile);
+        for (k, row) in numbers.chunks(length).enumerate() {
+            for (c, &x) in row.iter().enumerate() {
+                assert_eq!(tile[c][k], x * 2.0);
+            }
+        }
+        let mut back = vec![T::zero(); numbers.len()];
+        let mut vectors: Vec<&mut [T]> = back.chunks_mut(length).collect();
+        transpose_out(&tile, &mut vectors);
+        assert!(back.iter().zip(&numbers).all(|(&a, &b)| a == b * 2.0));
+    }
+
+    #[test]
+    fn transposing_back_and_forth() {
+        for height in [1, 3, 4, 7, 8, 31, 32] {
+            for length in [1, 3, 4, 8, 9, 17, 31] {
+                back_and_forth(height, length, |i| i as f64);
+                back_and_forth(height, length, |i| Complex64::new(i as f64, -1.0));
+            }
+        }
+    }
+
+    #[test]
+    fn places_that_are_no_neighbours() {
+        let (a, b) = ([1.0, 2.0, 3.0], [4.0, 5.0, 6.0]);
+        let mut tile = [[0.0; 8]; 3];
+        let lanes: [Lane<'_, f64>; 4] = [(6, 1.0, &a), (1, -1.0, &b), (3, 2.0, &a), (2, 1.0, &b)];
+        transpose_in(&lanes, &mut tile);
+        assert_eq!(tile[0], [0.0, -4.0, 4.0, 2.0, 0.0, 0.0, 1.0, 0.0]);
+        assert_eq!(tile[2], [0.0, -6.0, 6.0, 6.0, 0.0, 0.0, 3.0, 0.0]);
+    }
+}
