@@ -2,7 +2,29 @@
 
 use crate::error::Result;
 use crate::scalar::Scalar;
-use ndarray::{Array1, ArrayView2, ArrayViewMut2};
+use ndarray::{Array1, ArrayView2, ArrayViewMut2, Zip};
+
+/// One step of a three-term recurrence, factor (H - shift) x - subtrahend.
+#[derive(Debug, Clone, Copy)]
+pub struct Recurrence<'a, T> {
+    /// What the product is multiplied by.
+    pub factor: f64,
+    /// What is subtracted from the operator.
+    pub shift: f64,
+    /// What is subtracted from the product.
+    pub subtrahend: Subtrahend<'a, T>,
+}
+
+/// What a step of a recurrence subtracts.
+#[derive(Debug, Clone, Copy)]
+pub enum Subtrahend<'a, T> {
+    /// Nothing.
+    Nothing,
+    /// What the result overwrites.
+    Overwritten,
+    /// Another block.
+    Block(ArrayView2<'a, T>),
+}
 
 /// A Hermitian linear map, applied to blocks of vectors.
 ///
@@ -18,6 +40,21 @@ pub trait LinearOperator<T: Scalar>: Sync {
     /// Only [`crate::error::Error::Interrupted`], from operators that poll while they work.
     fn apply(&self, block: ArrayView2<'_, T>, out: ArrayViewMut2<'_, T>) -> Result<()>;
 
+    /// Overwrites row k of `out` with the next member of a three-term recurrence, with row k of
+    /// `block` as x. `scratch` is for use by operators that do not do this in one pass.
+    ///
+    /// # Errors
+    /// Those of [`apply`](Self::apply).
+    fn apply_recurrence(
+        &self,
+        block: ArrayView2<'_, T>,
+        step: Recurrence<'_, T>,
+        out: ArrayViewMut2<'_, T>,
+        scratch: &mut Vec<T>,
+    ) -> Result<()> {
+        recurrence_by_product(self, block, step, out, scratch)
+    }
+
     /// Whether a product takes much longer than reading a few dozen vectors. Solvers then save
     /// products rather than passes over their basis.
     fn has_costly_products(&self) -> bool {
@@ -26,4 +63,35 @@ pub trait LinearOperator<T: Scalar>: Sync {
 
     /// The diagonal matrix elements, real since the map is Hermitian.
     fn diagonal(&self) -> Array1<f64>;
+}
+
+/// A step of a recurrence for operators that know products only.
+///
+/// # Errors
+/// Those of [`LinearOperator::apply`].
+pub fn recurrence_by_product<T: Scalar>(
+    operator: &(impl LinearOperator<T> + ?Sized),
+    block: ArrayView2<'_, T>,
+    step: Recurrence<'_, T>,
+    mut out: ArrayViewMut2<'_, T>,
+    scratch: &mut Vec<T>,
+) -> Result<()> {
+    let length = block.len();
+    scratch.resize(length.max(scratch.len()), T::zero());
+    let image = ArrayViewMut2::from_shape(block.raw_dim(), &mut scratch[..length]);
+    let mut image = image.expect("as many numbers as the block has");
+    operator.apply(block, image.view_mut())?;
+    let Recurrence { factor, shift, .. } = step;
+    let shifted = |image: T, x: T| (image - x * shift) * factor;
+    let zip = Zip::from(&mut out).and(&image).and(&block);
+    match step.subtrahend {
+        Subtrahend::Nothing => zip.par_for_each(|out, &image, &x| *out = shifted(image, x)),
+        Subtrahend::Overwritten => {
+            zip.par_for_each(|out, &image, &x| *out = shifted(image, x) - *out);
+        }
+        Subtrahend::Block(other) => zip
+            .and(&other)
+            .par_for_each(|out, &image, &x, &other| *out = shifted(image, x) - other),
+    }
+    Ok(())
 }

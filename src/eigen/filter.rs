@@ -6,23 +6,26 @@
 //! same order. An estimate of b that is too low slows convergence down and falsifies nothing.
 //! (Filters of this kind: Zhou and Saad, SIAM J. Matrix Anal. Appl. 29, 954 (2007); recalled.)
 
-use crate::error::Result;
-use crate::linear_operator::LinearOperator;
+use crate::error::{Error, Result};
+use crate::linear_operator::{LinearOperator, Recurrence, Subtrahend};
 use crate::scalar::Scalar;
-use ndarray::{ArrayView1, ArrayView2, ArrayViewMut1, ArrayViewMut2, Axis, Zip};
+use ndarray::{ArrayView2, ArrayViewMut2, Axis};
+use std::ops::ControlFlow;
 
 /// Natural logarithm of twice the image of the highest level wanted: with much more, each step
 /// would take more products than the steps saved; with less, more steps.
-const STRENGTH: f64 = 2.0;
+const STRENGTH: f64 = 3.0;
 /// The same for the lowest level: rounding errors grow with the range of the images.
-const MOST_STRENGTH: f64 = 8.0;
-const DEGREES: std::ops::RangeInclusive<usize> = 3..=25;
+const MOST_STRENGTH: f64 = 12.0;
+const DEGREES: std::ops::RangeInclusive<usize> = 3..=49;
 
 /// T_m((A - c) / e) with c and e the centre and half the width of [a, b].
 pub(super) struct Filter<T> {
     interval: (f64, f64),
     degree: usize,
-    /// Two vectors.
+    /// The latest member of even degree.
+    even: Vec<T>,
+    /// For the operator.
     scratch: Vec<T>,
 }
 
@@ -33,6 +36,7 @@ impl<T: Scalar> Filter<T> {
         let mut filter = Filter {
             interval,
             degree: 1,
+            even: Vec::new(),
             scratch: Vec::new(),
         };
         let rate = |energy| (-filter.position(energy)).acosh();
@@ -49,6 +53,11 @@ impl<T: Scalar> Filter<T> {
     /// Products with the operator for one with the filter.
     pub fn degree(&self) -> usize {
         self.degree
+    }
+
+    /// What it damps.
+    pub fn interval(&self) -> (f64, f64) {
+        self.interval
     }
 
     fn position(&self, energy: f64) -> f64 {
@@ -75,86 +84,51 @@ impl<T: Scalar> Filter<T> {
         (-image - 1.0) / (self.interval.1 - energy)
     }
 
-    /// Overwrites the rows of `out` with the images of those of `block`.
+    /// Overwrites the rows of `out` with the images of those of `block`; `poll` is called with
+    /// the number of products after each but the last.
     ///
     /// # Errors
-    /// What the operator returns.
+    /// What the operator returns; [`Error::Interrupted`] if `poll` says so.
     pub fn apply(
         &mut self,
         operator: &dyn LinearOperator<T>,
         block: ArrayView2<'_, T>,
         mut out: ArrayViewMut2<'_, T>,
+        poll: &mut dyn FnMut(usize) -> ControlFlow<()>,
     ) -> Result<()> {
+        let mut products = 0;
         let n = block.ncols();
-        self.scratch.resize(2 * n, T::zero());
-        let (before, now) = self.scratch.split_at_mut(n);
+        self.even.resize(n, T::zero());
+        let mut even = ArrayViewMut2::from_shape((1, n), &mut self.even).expect("one row");
         let (lower, upper) = self.interval;
-        let recurrence = Recurrence {
-            operator,
-            centre: 0.5 * (lower + upper),
-            half_width: 0.5 * (upper - lower),
-            degree: self.degree,
+        let factor = 2.0 / (upper - lower);
+        let once = Recurrence {
+            factor,
+            shift: 0.5 * (lower + upper),
+            subtrahend: Subtrahend::Nothing,
         };
-        let rows = block.axis_iter(Axis(0)).zip(out.axis_iter_mut(Axis(0)));
-        for (row, out) in rows {
-            recurrence.run(row, out, before.into(), now.into())?;
-        }
-        Ok(())
-    }
-}
-
-struct Recurrence<'a, T: Scalar> {
-    operator: &'a dyn LinearOperator<T>,
-    centre: f64,
-    half_width: f64,
-    degree: usize,
-}
-
-impl<T: Scalar> Recurrence<'_, T> {
-    /// T_0 = 1, T_1 = x, T_(k+1) = 2 x T_k - T_(k-1), applied to `row`.
-    fn run<'b>(
-        &self,
-        row: ArrayView1<'_, T>,
-        mut image: ArrayViewMut1<'_, T>,
-        mut before: ArrayViewMut1<'b, T>,
-        mut now: ArrayViewMut1<'b, T>,
-    ) -> Result<()> {
-        let factor = 1.0 / self.half_width;
-        let (once, twice) = ((factor, -factor * self.centre), 2.0 * factor);
-        let twice = (twice, -twice * self.centre);
-        self.multiply(row, image.view_mut())?;
-        Zip::from(&mut now)
-            .and(&image)
-            .and(&row)
-            .par_for_each(|now, &image, &row| *now = image * once.0 + row * once.1);
-        for k in 2..=self.degree {
-            self.multiply(now.view(), image.view_mut())?;
-            let step = |before: T, image: T, now: T| image * twice.0 + now * twice.1 - before;
-            if k == self.degree {
-                let before = if k == 2 { row } else { before.view() };
-                Zip::from(&mut image)
-                    .and(&before)
-                    .and(&now)
-                    .par_for_each(|image, &before, &now| *image = step(before, *image, now));
-            } else if k == 2 {
-                Zip::from(&mut before)
-                    .and(&row)
-                    .and(&image)
-                    .and(&now)
-                    .par_for_each(|new, &row, &image, &now| *new = step(row, image, now));
-            } else {
-                Zip::from(&mut before)
-                    .and(&image)
-                    .and(&now)
-                    .par_for_each(|before, &image, &now| *before = step(*before, image, now));
+        let rows = block.axis_chunks_iter(Axis(0), 1);
+        for (row, mut odd) in rows.zip(out.axis_chunks_iter_mut(Axis(0), 1)) {
+            // T_0 = 1, T_1 = x, T_(k+1) = 2 x T_k - T_(k-1), odd members in the result
+            let mut step = |from: ArrayView2<'_, T>, step, to: ArrayViewMut2<'_, T>| {
+                if products > 0 && poll(products).is_break() {
+                    return Err(Error::Interrupted);
+                }
+                products += 1;
+                operator.apply_recurrence(from, step, to, &mut self.scratch)
+            };
+            let mut twice = Recurrence {
+                factor: 2.0 * factor,
+                subtrahend: Subtrahend::Block(row),
+                ..once
+            };
+            step(row, once, odd.view_mut())?;
+            for _ in 0..self.degree / 2 {
+                step(odd.view(), twice, even.view_mut())?;
+                twice.subtrahend = Subtrahend::Overwritten;
+                step(even.view(), twice, odd.view_mut())?;
             }
-            std::mem::swap(&mut before, &mut now);
         }
         Ok(())
-    }
-
-    fn multiply(&self, row: ArrayView1<'_, T>, image: ArrayViewMut1<'_, T>) -> Result<()> {
-        let (row, image) = (row.insert_axis(Axis(0)), image.insert_axis(Axis(0)));
-        self.operator.apply(row, image)
     }
 }

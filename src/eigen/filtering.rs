@@ -7,29 +7,55 @@ use crate::scalar::Scalar;
 
 /// Steps that must be affordable for a filter to be worth while.
 const FEWEST_FILTERED_STEPS: usize = 8;
-/// Rows that a filter takes in memory.
+/// Rows that a filter takes in memory, with one for operators that need it.
 const FILTER_ROWS: usize = 2;
+/// Least ratio of degrees for which another filter is worth beginning anew.
+const RISE: usize = 3;
+/// Residual norms of Ritz values that may end an interval, over their distance from the levels
+/// wanted. (Residual norms through a filter are bounds, and large ones.)
+const SEPARATION: f64 = 10.0;
 
 impl<T: Scalar> Search<'_, '_, T> {
-    /// Begins to filter when the Ritz values of a full basis say how, or stops when the levels
-    /// wanted are not below the filtered interval; whether there was anything to change.
-    pub fn change_filter(&mut self, wanted: usize) -> bool {
+    /// Begins to filter when the Ritz values of a full basis say how, filters more strongly when
+    /// they have become good enough to say how, and stops when the levels wanted are not below
+    /// the filtered interval; whether there was anything to change.
+    pub fn change_filter(&mut self, wanted: usize, full: bool) -> bool {
         let in_space = wanted - self.locked.len().min(wanted - 1);
-        if self.run.filter().is_some() {
-            let insufficient = self.levels().len() <= wanted;
-            if insufficient {
-                self.run.change_filter(None, in_space);
-            }
-            return insufficient;
+        let degree = self.run.filter().map_or(0, Filter::degree);
+        if full && degree > 0 && self.levels().len() <= wanted {
+            self.run.change_filter(None, in_space);
+            return true;
         }
-        let filter = self.choose_filter(in_space);
-        let chosen = filter.is_some();
-        if chosen {
-            self.filters -= 1;
+        if !(if degree > 0 {
+            self.separated(in_space)
+        } else {
+            full
+        }) {
+            return false;
+        }
+        let better = |filter: &Filter<T>| filter.degree() >= RISE * degree;
+        let Some(filter) = self.choose_filter(in_space).filter(better) else {
+            return false;
+        };
+        self.filters -= 1;
+        if degree == 0 {
             self.most_rows -= FILTER_ROWS;
-            self.run.change_filter(filter, in_space + 1);
         }
-        chosen
+        self.run.change_filter(Some(filter), in_space + 1);
+        true
+    }
+
+    /// Whether the lowest `wanted` Ritz values and the two beyond are known well enough to place
+    /// the end of an interval between them.
+    fn separated(&self, wanted: usize) -> bool {
+        let (values, residuals) = (&self.run.ritz.values, &self.run.ritz.residuals);
+        if !self.run.fresh() || values.len() < wanted + 2 {
+            return false;
+        }
+        let distance = values[wanted + 1] - values[wanted - 1];
+        residuals[..=wanted + 1]
+            .iter()
+            .all(|&r| r < SEPARATION * distance)
     }
 
     /// The filter that the Ritz values suggest for the lowest `wanted` levels, if it is of use.
@@ -43,8 +69,11 @@ impl<T: Scalar> Search<'_, '_, T> {
             return None;
         }
         let (lower, highest) = (*values.get(wanted + 1)?, *values.get(wanted - 1)?);
-        // the residual norm is not quite sure to reach the end of the spectrum
-        let upper = values.last()? + residuals.last()?;
+        let upper = match self.run.filter() {
+            Some(filter) => filter.interval().1,
+            // the residual norm is not quite sure to reach the end of the spectrum
+            None => values.last()? + residuals.last()?,
+        };
         let filter = Filter::new((lower, upper), values[0], highest)?;
         let left = self.request.max_products - self.run.products;
         (left / filter.degree() >= FEWEST_FILTERED_STEPS).then_some(filter)

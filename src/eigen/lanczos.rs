@@ -9,6 +9,7 @@ use super::orthogonal::{Purge, fill_random, orthonormalize, rotate};
 use crate::dense::eigh;
 use crate::error::{Error, Result};
 use crate::linear_operator::LinearOperator;
+use crate::progress::{Monitor, Progress};
 use crate::scalar::Scalar;
 use ndarray::{Array2, ArrayView2, ArrayViewMut2, Axis, s};
 use rand::SeedableRng;
@@ -87,6 +88,8 @@ pub(super) struct BlockLanczos<'a, T: Scalar> {
     norm: f64,
     /// Products with the operator so far.
     pub products: usize,
+    /// The latest report.
+    pub latest: Progress,
     /// Residual norm to be reached: overlaps in the basis must not spoil it.
     accuracy: f64,
     generator: ChaCha8Rng,
@@ -130,6 +133,13 @@ impl<'a, T: Scalar> BlockLanczos<'a, T> {
             scale: 0.0,
             norm: 0.0,
             products: 0,
+            latest: Progress {
+                stage: "levels",
+                done: 0,
+                total: 0,
+                products: 0,
+                residual: f64::INFINITY,
+            },
             accuracy,
             generator: ChaCha8Rng::seed_from_u64(seed),
         })
@@ -206,10 +216,10 @@ impl<'a, T: Scalar> BlockLanczos<'a, T> {
     /// Ritz pairs up to date.
     ///
     /// # Errors
-    /// What the operator returns; the Ritz pairs are then still those of before.
-    pub fn step(&mut self) -> Result<()> {
+    /// Those of [`multiply`](Self::multiply); the Ritz pairs are then still those of before.
+    pub fn step(&mut self, monitor: &mut Monitor<'_>) -> Result<()> {
         let (rows, active, locked) = (self.rows(), self.active, self.locked);
-        self.multiply(rows - active..rows, rows)?;
+        self.multiply(rows - active..rows, rows, monitor)?;
         let purge = Purge {
             first_expected: if locked > 0 { 0 } else { self.first_coupled },
             noise: 16.0 * f64::EPSILON * self.norm(),
@@ -236,13 +246,25 @@ impl<'a, T: Scalar> BlockLanczos<'a, T> {
     /// Overwrites the rows from `to` on with the images of the rows `from`, all before them.
     ///
     /// # Errors
-    /// What the operator returns.
-    pub fn multiply(&mut self, from: Range<usize>, to: usize) -> Result<()> {
+    /// What the operator returns; [`Error::Interrupted`] if the monitor, called between products
+    /// with the latest report, says so.
+    pub fn multiply(
+        &mut self,
+        from: Range<usize>,
+        to: usize,
+        monitor: &mut Monitor<'_>,
+    ) -> Result<()> {
         let (operator, mut filter) = (self.operator, self.filter.take());
+        let (before, latest) = (self.products, self.latest);
         let (rows, image) = self.split(to, from.len());
         let block = rows.slice(s![from.clone(), ..]);
         let done = match &mut filter {
-            Some(filter) => filter.apply(operator, block, image),
+            Some(filter) => filter.apply(operator, block, image, &mut |done| {
+                monitor(&Progress {
+                    products: before + done,
+                    ..latest
+                })
+            }),
             None => operator.apply(block, image),
         };
         self.filter = filter;

@@ -13,6 +13,7 @@ mod multiplet;
 mod orthogonal;
 mod probe;
 mod search;
+mod single;
 
 use crate::error::{Error, Result};
 use crate::linear_operator::LinearOperator;

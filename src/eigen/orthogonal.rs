@@ -7,12 +7,14 @@
 //! A basis is a `(rows, n)` array V with orthonormal rows, a block a `(p, n)` array W; their
 //! overlaps are the `(rows, p)` matrix <v_i, w_a>.
 
+use super::single;
 use crate::dense::{Conjugate, Threads, eigh, multiply};
 use crate::error::{Error, Result};
 use crate::scalar::Scalar;
 use ndarray::parallel::prelude::*;
 use ndarray::{Array2, ArrayView2, ArrayViewMut1, ArrayViewMut2, Axis, s};
-use rand::Rng;
+use rand::{Rng, SeedableRng};
+use rand_chacha::ChaCha8Rng;
 
 /// Columns handled at once: two dozen rows of them fit in a second-level cache.
 const CHUNK: usize = 4096;
@@ -42,6 +44,9 @@ pub(super) struct Split<T> {
 }
 
 fn conjugate_product<T: Scalar>(left: ArrayView2<'_, T>, right: ArrayView2<'_, T>) -> Array2<T> {
+    if let Some(overlaps) = single::overlaps(left, right) {
+        return overlaps;
+    }
     let mut out = Array2::zeros((left.nrows(), right.nrows()));
     if !out.is_empty() {
         multiply(
@@ -104,9 +109,12 @@ fn multiply_into<T: Scalar>(
     left: ArrayView2<'_, T>,
     right: ArrayView2<'_, T>,
     keep: T,
-    out: ArrayViewMut2<'_, T>,
+    mut out: ArrayViewMut2<'_, T>,
 ) {
     if out.is_empty() || right.is_empty() {
+        return;
+    }
+    if keep == T::one() && single::add_combination(factor, left, right, &mut out) {
         return;
     }
     let (left, right) = ((left, Conjugate::No), (right, Conjugate::No));
@@ -130,17 +138,16 @@ fn sweep<T: Scalar>(
         .into_par_iter()
         .zip(chunks(basis))
         .map(|(mut whole, v)| {
-            let before = transform.map(|_| whole.to_owned());
-            let mut w = whole.slice_mut(s![..width, ..]);
-            if let (Some(matrix), Some(before)) = (transform, before) {
-                multiply_into(
-                    T::one(),
-                    matrix.view(),
-                    before.view(),
-                    T::zero(),
-                    w.view_mut(),
-                );
+            if let Some(matrix) = transform {
+                if whole.nrows() == 1 && width == 1 {
+                    whole.mapv_inplace(|x| matrix[[0, 0]] * x);
+                } else {
+                    let before = whole.to_owned();
+                    let w = whole.slice_mut(s![..width, ..]);
+                    multiply_into(T::one(), matrix.view(), before.view(), T::zero(), w);
+                }
             }
+            let mut w = whole.slice_mut(s![..width, ..]);
             if let Some(matrix) = subtract {
                 let last = v.slice(s![v.nrows() - matrix.nrows().., ..]);
                 multiply_into(-T::one(), matrix.t(), last, T::one(), w.view_mut());
@@ -253,10 +260,16 @@ fn deviation_from_one<T: Scalar>(gram: &Array2<T>) -> f64 {
     largest(&(gram - &Array2::<T>::eye(gram.nrows())))
 }
 
-/// Fills a row with random numbers, of norm one on average.
+/// Fills a row with random numbers, of norm one on average; each chunk has a stream of its own.
 pub(super) fn fill_random<T: Scalar, R: Rng>(mut row: ArrayViewMut1<'_, T>, generator: &mut R) {
     let scale = 1.0 / (row.len() as f64).sqrt();
-    row.mapv_inplace(|_| T::random_normal(generator) * scale);
+    let start = ChaCha8Rng::from_seed(generator.random());
+    let chunks = row.axis_chunks_iter_mut(Axis(0), CHUNK).into_par_iter();
+    chunks.enumerate().for_each(|(k, mut chunk)| {
+        let mut generator = start.clone();
+        generator.set_stream(k as u64);
+        chunk.mapv_inplace(|_| T::random_normal(&mut generator) * scale);
+    });
 }
 
 /// Replaces the rows whose weight in the original block is rounding noise; whether there were any.

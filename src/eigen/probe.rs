@@ -115,7 +115,7 @@ impl Probe {
         let mut failure_probability = 1.0;
         for turn in 0..(self.budget / run.cost()).min(room) {
             let current = current_row(turn);
-            match run.multiply(current..current + 1, self.known + 2) {
+            match run.multiply(current..current + 1, self.known + 2, monitor) {
                 Err(Error::Interrupted) => return Ok(Finding::Interrupted),
                 other => other?,
             }
@@ -129,14 +129,14 @@ impl Probe {
                 }
             }
             failure_probability = polynomials[0].failure_probability::<T>(room);
-            let progress = Progress {
+            run.latest = Progress {
                 stage: "level count",
                 done: self.levels,
                 total: self.levels,
                 products: run.products,
                 residual: failure_probability,
             };
-            if monitor(&progress).is_break() {
+            if monitor(&run.latest).is_break() {
                 return Ok(Finding::Interrupted);
             }
             if failure_probability <= ENOUGH || after <= 16.0 * f64::EPSILON * run.norm() {

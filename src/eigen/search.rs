@@ -171,7 +171,7 @@ impl<'a, 'b, T: Scalar> Search<'a, 'b, T> {
     ) -> Result<std::result::Result<Assessment, Status>> {
         let mut wanted = self.goal.levels;
         loop {
-            match self.run.step() {
+            match self.run.step(monitor) {
                 Err(Error::Interrupted) => return Ok(Err(Status::Interrupted)),
                 other => other?,
             }
@@ -198,7 +198,7 @@ impl<'a, 'b, T: Scalar> Search<'a, 'b, T> {
         }
     }
 
-    fn report(&self, levels: &[Level], monitor: &mut Monitor<'_>) -> std::ops::ControlFlow<()> {
+    fn report(&mut self, levels: &[Level], monitor: &mut Monitor<'_>) -> std::ops::ControlFlow<()> {
         let tolerance = self.goal.residual_tolerance(levels, self.run.scale);
         let wanted = &levels[..self.goal.levels.min(levels.len())];
         let converged = wanted
@@ -211,13 +211,14 @@ impl<'a, 'b, T: Scalar> Search<'a, 'b, T> {
                 .iter()
                 .fold(0.0, |top: f64, level| top.max(level.residual))
         };
-        monitor(&Progress {
+        self.run.latest = Progress {
             stage: "levels",
             done: converged.count(),
             total: self.goal.levels,
             products: self.run.products,
             residual,
-        })
+        };
+        monitor(&self.run.latest)
     }
 
     /// Levels still wanted from the basis, and the rows it may have for them.
@@ -236,11 +237,12 @@ impl<'a, 'b, T: Scalar> Search<'a, 'b, T> {
 
     /// Extends the basis, or restarts it when it is full.
     fn advance(&mut self, wanted: usize) {
-        if !self.full(wanted) {
-            self.run.extend();
+        let full = self.full(wanted);
+        if self.change_filter(wanted, full) {
             return;
         }
-        if self.change_filter(wanted) {
+        if !full {
+            self.run.extend();
             return;
         }
         self.restarts += 1;

@@ -132,9 +132,15 @@ impl<T: Scalar> HopCoupling<T> {
         }
     }
 
-    /// Adds the coupling of row k of `block` to row k of `out`; `down` is the number of down
-    /// configurations.
-    pub fn add_to(&self, block: ArrayView2<'_, T>, mut out: ArrayViewMut2<'_, T>, down: usize) {
+    /// Adds `factor` times the coupling of row k of `block` to row k of `out`; `down` is the
+    /// number of down configurations.
+    pub fn add_to(
+        &self,
+        factor: f64,
+        block: ArrayView2<'_, T>,
+        mut out: ArrayViewMut2<'_, T>,
+        down: usize,
+    ) {
         out.axis_chunks_iter_mut(Axis(1), down)
             .into_par_iter()
             .enumerate()
@@ -149,7 +155,7 @@ impl<T: Scalar> HopCoupling<T> {
                             };
                         self.mix(self.up.into_configuration(up), strings, workspace);
                         for (target, configuration) in result.iter_mut().zip(0..) {
-                            *target += self.collect(configuration, workspace);
+                            *target += self.collect(configuration, workspace) * factor;
                         }
                     }
                 },

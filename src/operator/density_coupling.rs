@@ -73,15 +73,17 @@ impl DensityCoupling {
         potentials
     }
 
-    /// The coupling of one down configuration with the up configurations of a tile.
+    /// The coupling of one down configuration with the up configurations of a tile, and a
+    /// constant.
     #[inline(always)]
     pub fn act<T: Scalar, const W: usize>(
         &self,
         potentials: &[[f64; W]],
         down: usize,
+        constant: f64,
         x: &[T; W],
     ) -> [T; W] {
-        let mut total = [0.0; W];
+        let mut total = [constant; W];
         for &q in self.down.of(down) {
             let potential = &potentials[q as usize];
             for k in 0..W {

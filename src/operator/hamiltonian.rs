@@ -9,7 +9,7 @@ use super::symmetry;
 use super::terms::ModeTerms;
 use super::walker::ModeSpace;
 use crate::error::{Error, Result};
-use crate::linear_operator::LinearOperator;
+use crate::linear_operator::{LinearOperator, Recurrence, Subtrahend, recurrence_by_product};
 use crate::memory;
 use crate::scalar::Scalar;
 use crate::sector::Sector;
@@ -365,12 +365,37 @@ impl<T: Scalar> LinearOperator<T> for Hamiltonian<T> {
                 Representation::Stored(matrix) => matrix.apply(block, out.view_mut()),
                 Representation::Modes(operator) => operator.apply(block, out.view_mut()),
                 Representation::Split(operator) => operator.apply(block, out.view_mut()),
-                Representation::SpinHalf(operator) => operator.apply(block, out.view_mut()),
+                Representation::SpinHalf(operator) => {
+                    let product = Recurrence {
+                        factor: 1.0,
+                        shift: -self.constant,
+                        subtrahend: Subtrahend::Nothing,
+                    };
+                    return operator.apply_recurrence(block, product, out);
+                }
             }
             if self.constant != 0.0 {
                 out.scaled_add(T::from_real(self.constant), &block);
             }
         });
+        Ok(())
+    }
+
+    fn apply_recurrence(
+        &self,
+        block: ArrayView2<'_, T>,
+        step: Recurrence<'_, T>,
+        out: ArrayViewMut2<'_, T>,
+        scratch: &mut Vec<T>,
+    ) -> Result<()> {
+        let Representation::SpinHalf(operator) = self.representation()? else {
+            return recurrence_by_product(self, block, step, out, scratch);
+        };
+        let step = Recurrence {
+            shift: step.shift - self.constant,
+            ..step
+        };
+        rayon::scope(|_| operator.apply_recurrence(block, step, out));
         Ok(())
     }
 

@@ -8,15 +8,16 @@ use super::density_coupling::DensityCoupling;
 use super::interaction::Interaction;
 use super::modes::ModeOperator;
 use super::stored::RowSink;
-use super::strings::StringMatrix;
+use super::strings::{Diagonal, RowSubtrahend, StringMatrix};
 use super::terms::ModeTerms;
 use super::tile::with_tile_width;
 use super::walker::ModeSpace;
 use crate::dense::{Conjugate, Threads, multiply};
 use crate::error::Result;
+use crate::linear_operator::{Recurrence, Subtrahend};
 use crate::memory;
 use crate::scalar::Scalar;
-use ndarray::{Array1, ArrayView2, ArrayView3, ArrayViewMut2, Axis};
+use ndarray::{Array1, ArrayView2, ArrayView3, ArrayViewMut2, Axis, s};
 use rayon::prelude::*;
 use std::ops::Range;
 
@@ -75,19 +76,39 @@ impl<T: Scalar> SpinHalfOperator<T> {
         (self.up.sparse.rows(), self.down.sparse.rows())
     }
 
-    /// Overwrites row k of `out` with the product with row k of `block`.
+    /// Overwrites row k of `out` with a step of a recurrence from row k of `block`.
     ///
     /// One vector after the other: what the first pass reads is then still in cache for the
     /// second.
-    pub fn apply(&self, block: ArrayView2<'_, T>, mut out: ArrayViewMut2<'_, T>) {
+    pub fn apply_recurrence(
+        &self,
+        block: ArrayView2<'_, T>,
+        step: Recurrence<'_, T>,
+        mut out: ArrayViewMut2<'_, T>,
+    ) {
         let (up, down) = self.shape();
-        for (vector, mut result) in block.rows().into_iter().zip(out.rows_mut()) {
+        let (factor, buffers) = (step.factor, &self.buffers);
+        let diagonal = Diagonal {
+            coupling: self.density.as_ref(),
+            constant: -step.shift,
+            factor,
+        };
+        let rows = block.rows().into_iter().zip(out.rows_mut());
+        for (k, (vector, mut result)) in rows.enumerate() {
             let (Some(vector), Some(result)) = (vector.to_slice(), result.as_slice_mut()) else {
                 continue;
             };
-            let (coupling, buffers) = (self.density.as_ref(), &self.buffers);
+            let subtrahend = match step.subtrahend {
+                Subtrahend::Nothing => RowSubtrahend::Nothing,
+                Subtrahend::Overwritten => RowSubtrahend::Overwritten,
+                Subtrahend::Block(other) => match other.slice_move(s![k, ..]).to_slice() {
+                    Some(other) => RowSubtrahend::Vector(other),
+                    None => continue,
+                },
+            };
             with_tile_width!(up, W => {
-                self.down.apply_to_rows::<W>(coupling, vector, result, buffers)
+                let result = (&mut *result, subtrahend);
+                self.down.apply_to_rows::<W>(diagonal, vector, result, buffers)
             });
             let (Ok(strings), Ok(mut result)) = (
                 ArrayView2::from_shape((up, down), vector),
@@ -96,17 +117,17 @@ impl<T: Scalar> SpinHalfOperator<T> {
                 continue;
             };
             if let Some(dense) = &self.down.dense {
-                add_product((strings, dense.t()), result.view_mut());
+                add_product(factor, (strings, dense.t()), result.view_mut());
             }
             match &self.up.dense {
-                Some(dense) => add_product((dense.view(), strings), result),
+                Some(dense) => add_product(factor, (dense.view(), strings), result),
                 None => with_tile_width!(down, W => {
-                    self.up.add_to_columns::<W>(vector, result, buffers)
+                    self.up.add_to_columns::<W>(factor, vector, result, buffers)
                 }),
             }
         }
         if let Some(hops) = &self.hops {
-            hops.add_to(block, out, down);
+            hops.add_to(factor, block, out, down);
         }
     }
 
@@ -158,13 +179,14 @@ impl<T: Scalar> SpinHalfOperator<T> {
     }
 }
 
-/// result += left right
+/// result += factor left right
 fn add_product<T: Scalar>(
+    factor: f64,
     (left, right): (ArrayView2<'_, T>, ArrayView2<'_, T>),
     result: ArrayViewMut2<'_, T>,
 ) {
     multiply(
-        T::one(),
+        T::from_real(factor),
         (left, Conjugate::No),
         (right, Conjugate::No),
         T::one(),

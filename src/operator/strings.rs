@@ -9,7 +9,7 @@ use super::density_coupling::DensityCoupling;
 use super::modes::ModeOperator;
 use super::stored::SparseMatrix;
 use super::tile::with_row_product;
-use super::transpose::{LINE, Lane, transpose_in, transpose_line_out};
+use super::transpose::{LINE, Lane, Subtracted, transpose_in, transpose_line_out};
 use crate::error::Result;
 use crate::memory;
 use crate::scalar::Scalar;
@@ -55,13 +55,13 @@ impl<T: Scalar> StringMatrix<T> {
         Ok(StringMatrix { sparse, dense })
     }
 
-    /// result = vector (1 x matrix) + coupling, unless a dense product is to follow for the
-    /// former.
+    /// result = factor (vector (1 x matrix) + (coupling + constant) vector) - subtrahend, without
+    /// the first term if a dense product is to follow for it.
     pub fn apply_to_rows<const W: usize>(
         &self,
-        coupling: Option<&DensityCoupling>,
+        diagonal: Diagonal<'_>,
         vector: &[T],
-        result: &mut [T],
+        (result, subtrahend): (&mut [T], RowSubtrahend<'_, T>),
         buffers: &Buffers<T>,
     ) {
         let width = self.sparse.rows();
@@ -74,21 +74,36 @@ impl<T: Scalar> StringMatrix<T> {
                 .enumerate()
                 .map(|(k, row)| (k, 1.0, row))
                 .collect();
+            let others: Vec<&[T]> = match subtrahend {
+                RowSubtrahend::Vector(other) => {
+                    other[tile * W * width..].chunks(width).take(W).collect()
+                }
+                _ => Vec::new(),
+            };
+            let coupling = diagonal.coupling;
             buffers.with(W * width, |source| {
                 arch.dispatch(RowTile::<T, W> {
                     matrix: self.dense.is_none().then_some(&self.sparse),
                     coupling: coupling.map(|c| (c, c.potentials(tile * W, lanes.len()))),
+                    constant: diagonal.constant,
+                    factor: diagonal.factor,
                     lanes,
                     rows: result.chunks_mut(width).collect(),
+                    subtracted: match subtrahend {
+                        RowSubtrahend::Nothing => Subtracted::Nothing,
+                        RowSubtrahend::Overwritten => Subtracted::Overwritten,
+                        RowSubtrahend::Vector(_) => Subtracted::Vectors(&others),
+                    },
                     source: source.as_chunks_mut().0,
                 });
             });
         });
     }
 
-    /// result += (matrix x 1) vector
+    /// result += factor (matrix x 1) vector
     pub fn add_to_columns<const W: usize>(
         &self,
+        factor: f64,
         vector: &[T],
         mut result: ArrayViewMut2<'_, T>,
         buffers: &Buffers<T>,
@@ -100,6 +115,7 @@ impl<T: Scalar> StringMatrix<T> {
             buffers.with(W * height, |source| {
                 arch.dispatch(ColumnTile::<T, W> {
                     matrix: &self.sparse,
+                    factor,
                     vector: &vector[tile * W..],
                     width,
                     result,
@@ -110,13 +126,33 @@ impl<T: Scalar> StringMatrix<T> {
     }
 }
 
+/// What multiplies a vector in the pass over rows beside the down part, and a factor for all.
+#[derive(Clone, Copy)]
+pub struct Diagonal<'a> {
+    pub coupling: Option<&'a DensityCoupling>,
+    pub constant: f64,
+    pub factor: f64,
+}
+
+/// What the pass over rows subtracts.
+#[derive(Clone, Copy)]
+pub enum RowSubtrahend<'a, T> {
+    Nothing,
+    /// What it overwrites.
+    Overwritten,
+    Vector(&'a [T]),
+}
+
 /// A tile of rows: the down part and the density coupling. (A struct, not a closure: only then
 /// the work is compiled for the instruction set found at run time.)
 struct RowTile<'a, T, const W: usize> {
     matrix: Option<&'a SparseMatrix<T>>,
     coupling: Option<(&'a DensityCoupling, Vec<[f64; W]>)>,
+    constant: f64,
+    factor: f64,
     lanes: Vec<Lane<'a, T>>,
     rows: Vec<&'a mut [T]>,
+    subtracted: Subtracted<'a, T>,
     source: &'a mut [[T; W]],
 }
 
@@ -131,16 +167,18 @@ impl<T: Scalar, const W: usize> NullaryFnOnce for RowTile<'_, T, W> {
         for start in (0..source.len()).step_by(LINE) {
             let line = &mut line[..LINE.min(source.len() - start)];
             for (target, i) in line.iter_mut().zip(start..) {
+                let (x, constant) = (&source[i], self.constant);
                 let sum = match &self.coupling {
-                    Some((coupling, potentials)) => coupling.act(potentials, i, &source[i]),
-                    None => [T::zero(); W],
+                    Some((coupling, potentials)) => coupling.act(potentials, i, constant, x),
+                    None => scaled(*x, constant),
                 };
-                *target = match self.matrix {
+                let sum = match self.matrix {
                     Some(matrix) => with_row_product(sum, matrix, i, source),
                     None => sum,
                 };
+                *target = scaled(sum, self.factor);
             }
-            transpose_line_out(line, &mut self.rows, start);
+            transpose_line_out(line, &mut self.rows, self.subtracted, start);
         }
     }
 }
@@ -148,6 +186,7 @@ impl<T: Scalar, const W: usize> NullaryFnOnce for RowTile<'_, T, W> {
 /// A tile of columns: the up part.
 struct ColumnTile<'a, T, const W: usize> {
     matrix: &'a SparseMatrix<T>,
+    factor: f64,
     /// From the first number of the tile on.
     vector: &'a [T],
     /// Numbers from one row to the next.
@@ -176,23 +215,32 @@ impl<T: Scalar, const W: usize> NullaryFnOnce for ColumnTile<'_, T, W> {
             }
             for (mut row, sums) in rows.rows_mut().into_iter().zip(&waiting) {
                 if let Some(row) = row.as_slice_mut() {
-                    add_lane(row, sums);
+                    add_lane(row, self.factor, sums);
                 }
             }
         }
     }
 }
 
-/// row += sums, as far as the row reaches
+/// factor x numbers (a loop, since `map` on arrays ends in single numbers)
 #[inline(always)]
-fn add_lane<T: Scalar, const W: usize>(row: &mut [T], sums: &[T; W]) {
+fn scaled<T: Scalar, const W: usize>(mut numbers: [T; W], factor: f64) -> [T; W] {
+    for number in &mut numbers {
+        *number = *number * factor;
+    }
+    numbers
+}
+
+/// row += factor x sums, as far as the row reaches
+#[inline(always)]
+fn add_lane<T: Scalar, const W: usize>(row: &mut [T], factor: f64, sums: &[T; W]) {
     if let Ok(row) = <&mut [T; W]>::try_from(&mut *row) {
         for k in 0..W {
-            row[k] += sums[k];
+            row[k] += sums[k] * factor;
         }
     } else {
         for (total, &sum) in row.iter_mut().zip(sums) {
-            *total += sum;
+            *total += sum * factor;
         }
     }
 }

@@ -35,28 +35,45 @@ fn fill_lanes<T: Scalar, const W: usize>(lanes: &[Lane<'_, T>], start: usize, li
     }
 }
 
+/// What is subtracted on the way out.
+#[derive(Clone, Copy)]
+pub enum Subtracted<'a, T> {
+    Nothing,
+    /// What is overwritten.
+    Overwritten,
+    /// A vector for each of those written.
+    Vectors(&'a [&'a [T]]),
+}
+
 /// vectors\[place\]\[c\] = tile\[c\]\[place\]
 #[inline(always)]
 pub fn transpose_out<T: Scalar, const W: usize>(tile: &[[T; W]], vectors: &mut [&mut [T]]) {
     for (block, line) in tile.chunks(LINE).enumerate() {
-        transpose_line_out(line, vectors, block * LINE);
+        transpose_line_out(line, vectors, Subtracted::Nothing, block * LINE);
     }
 }
 
-/// vectors\[place\]\[start + c\] = line\[c\]\[place\], at most [`LINE`] columns
+/// vectors\[place\]\[start + c\] = line\[c\]\[place\] - what is subtracted, at most [`LINE`] columns
 #[inline(always)]
 pub fn transpose_line_out<T: Scalar, const W: usize>(
     line: &[[T; W]],
     vectors: &mut [&mut [T]],
+    subtracted: Subtracted<'_, T>,
     start: usize,
 ) {
     for (group, vectors) in vectors.chunks_mut(SIDE).enumerate() {
         let first = group * SIDE;
-        if !registers::transpose_out(line, (first, start), vectors) {
-            for (vector, place) in vectors.iter_mut().zip(first..) {
-                for (x, components) in vector[start..].iter_mut().zip(line) {
-                    *x = components[place];
-                }
+        if registers::transpose_out(line, (first, start), vectors, subtracted) {
+            continue;
+        }
+        for (vector, place) in vectors.iter_mut().zip(first..) {
+            for (c, (x, components)) in vector[start..].iter_mut().zip(line).enumerate() {
+                let less = match subtracted {
+                    Subtracted::Nothing => T::zero(),
+                    Subtracted::Overwritten => *x,
+                    Subtracted::Vectors(others) => others[place][start + c],
+                };
+                *x = components[place] - less;
             }
         }
     }
@@ -68,7 +85,7 @@ const SIDE: usize = 4;
 /// Transposition of real numbers in registers; the compiler does not find it by itself.
 #[cfg(target_arch = "x86_64")]
 mod registers {
-    use super::{LINE, Lane, SIDE};
+    use super::{LINE, Lane, SIDE, Subtracted};
     use crate::scalar::Scalar;
     use pulp::x86::V3;
     use std::arch::x86_64::__m256d;
@@ -141,6 +158,7 @@ mod registers {
         line: &[[T; W]],
         (first, start): (usize, usize),
         vectors: &mut [&mut [T]],
+        subtracted: Subtracted<'_, T>,
     ) -> bool {
         let (Some(simd), [a, b, c, d]) = (V3::try_new(), vectors) else {
             return false;
@@ -162,16 +180,26 @@ mod registers {
         ) else {
             return false;
         };
+        let parts = [a, b, c, d];
         for half in 0..LINE / SIDE {
             let row = |k: usize| {
                 let places = line[half * SIDE + k][first..].first_chunk::<SIDE>();
                 pulp::cast(places.copied().unwrap_or_default())
             };
             let columns = transposed(simd, [row(0), row(1), row(2), row(3)]);
-            a.as_chunks_mut::<SIDE>().0[half] = pulp::cast(columns[0]);
-            b.as_chunks_mut::<SIDE>().0[half] = pulp::cast(columns[1]);
-            c.as_chunks_mut::<SIDE>().0[half] = pulp::cast(columns[2]);
-            d.as_chunks_mut::<SIDE>().0[half] = pulp::cast(columns[3]);
+            for k in 0..SIDE {
+                let place = &mut parts[k].as_chunks_mut::<SIDE>().0[half];
+                let less = match subtracted {
+                    Subtracted::Nothing => None,
+                    Subtracted::Overwritten => Some(*place),
+                    Subtracted::Vectors(others) => real_part(others[first + k], start)
+                        .map(|part| part.as_chunks::<SIDE>().0[half]),
+                };
+                *place = pulp::cast(match less {
+                    Some(less) => simd.avx._mm256_sub_pd(columns[k], pulp::cast(less)),
+                    None => columns[k],
+                });
+            }
         }
         true
     }
@@ -190,7 +218,7 @@ mod registers {
 /// No registers of four numbers are known here.
 #[cfg(not(target_arch = "x86_64"))]
 mod registers {
-    use super::Lane;
+    use super::{Lane, Subtracted};
 
     pub fn transpose_in<T, const W: usize>(_: &[Lane<'_, T>], _: usize, _: &mut [[T; W]]) -> bool {
         false
@@ -200,6 +228,7 @@ mod registers {
         _: &[[T; W]],
         _: (usize, usize),
         _: &mut [&mut [T]],
+        _: Subtracted<'_, T>,
     ) -> bool {
         false
     }

@@ -2,7 +2,7 @@
 //! operators on occupations, entry by entry.
 
 use approx::assert_abs_diff_eq;
-use fockhull::linear_operator::LinearOperator;
+use fockhull::linear_operator::{LinearOperator, Recurrence, Subtrahend};
 use fockhull::operator::{Entry, Hamiltonian, Interaction, TensorOrder};
 use fockhull::scalar::Scalar;
 use fockhull::sector::Sector;
@@ -132,6 +132,26 @@ fn assert_matches<T: Scalar>(hamiltonian: &Hamiltonian<T>, expected: &Array2<T>,
         hamiltonian.apply(block.view(), out.view_mut()).unwrap();
         let product = block.dot(&expected.t());
         assert_abs_diff_eq!(worst(&out, &product), 0.0, epsilon = 1e-10);
+        let (factor, shift) = (0.5, 1.5);
+        let step = (product - &block * T::from_real(shift)) * T::from_real(factor);
+        let other = Array2::from_shape_fn(out.dim(), |_| T::random_normal(&mut generator));
+        let mut scratch = Vec::new();
+        for (subtrahend, subtracted) in [
+            (Subtrahend::Nothing, Array2::zeros(out.dim())),
+            (Subtrahend::Overwritten, out.clone()),
+            (Subtrahend::Block(other.view()), other.clone()),
+        ] {
+            let recurrence = Recurrence {
+                factor,
+                shift,
+                subtrahend,
+            };
+            let mut next = out.clone();
+            hamiltonian
+                .apply_recurrence(block.view(), recurrence, next.view_mut(), &mut scratch)
+                .unwrap();
+            assert_abs_diff_eq!(worst(&next, &(&step - &subtracted)), 0.0, epsilon = 1e-10);
+        }
     }
     let diagonal = hamiltonian.diagonal_elements().unwrap();
     for (value, reference) in diagonal.iter().zip(expected.diag()) {
@@ -307,4 +327,43 @@ fn check_low_and_high<T: Scalar>() {
 fn low_and_high_modes() {
     check_low_and_high::<f64>();
     check_low_and_high::<Complex64>();
+}
+
+/// Products of sectors that fill several tiles against the stored matrix.
+fn check_tiles<T: Scalar>() {
+    for (seed, (d, up, down)) in [(8, 4, 3), (7, 3, 1), (9, 1, 4)].into_iter().enumerate() {
+        let sector = Sector::spin_half(d, up, down).unwrap();
+        let mut generator = ChaCha8Rng::seed_from_u64(200 + seed as u64);
+        let h = random_one_body::<T>(&sector, &mut generator);
+        // few enough hops for sparse one-spin matrices
+        let near = |p: usize, q: usize| p.abs_diff(q) <= 1;
+        let h = Array3::from_shape_fn(
+            h.dim(),
+            |(s, p, q)| {
+                if near(p, q) { h[[s, p, q]] } else { T::zero() }
+            },
+        );
+        let a = Array2::from_shape_fn((d, d), |_| f64::random_normal(&mut generator));
+        let density = &a + &a.t();
+        let interaction = Interaction::from_density_density(sector, density.view()).unwrap();
+        for interaction in [None, Some(Arc::new(interaction))] {
+            let hamiltonian = Hamiltonian::new(sector, h.view(), interaction, -0.5).unwrap();
+            let n = v_dimension(&sector);
+            let sparse = hamiltonian.to_sparse().unwrap();
+            let mut expected = Array2::zeros((n, n));
+            for row in 0..n {
+                let (columns, values) = sparse.row(row);
+                for (&column, &value) in columns.iter().zip(values) {
+                    expected[[row, column as usize]] = value;
+                }
+            }
+            assert_matches(&hamiltonian, &expected, seed as u64);
+        }
+    }
+}
+
+#[test]
+fn several_tiles() {
+    check_tiles::<f64>();
+    check_tiles::<Complex64>();
 }
