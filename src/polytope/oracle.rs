@@ -3,7 +3,7 @@
 use crate::error::{Error, Result};
 use crate::sector::{LowestConfigurations, Sector};
 use crate::weights::Weights;
-use ndarray::{Array2, ArrayView1, ArrayView2, Axis, concatenate};
+use ndarray::{Array2, ArrayView1, ArrayView2, Axis, CowArray, Ix2, concatenate};
 use num_bigint::BigUint;
 use std::fmt;
 use std::sync::Arc;
@@ -24,6 +24,8 @@ pub enum Domain {
 pub(super) struct Oracle {
     pub sector: Sector,
     pub weights: Arc<Weights>,
+    /// Their sum, one but for rounding.
+    total: f64,
     pub domain: Domain,
 }
 
@@ -55,6 +57,7 @@ impl Oracle {
         }
         Ok(Oracle {
             sector,
+            total: weights.as_slice().iter().sum(),
             weights: Arc::new(weights),
             domain,
         })
@@ -84,23 +87,28 @@ impl Oracle {
 
     /// The lowest configurations, one for each weight.
     pub fn line_up(&self, potential: ArrayView2<'_, f64>) -> Result<LowestConfigurations> {
-        let count = self.weights.count();
+        let energies = self.energies(potential);
+        self.sector
+            .lowest_configurations(energies.view(), self.weights.count())
+    }
+
+    /// One-particle energies `(spins, modes)`.
+    fn energies<'a>(&self, potential: ArrayView2<'a, f64>) -> CowArray<'a, f64, Ix2> {
         if self.domain == Domain::SpinSummed {
             // both spins feel the same potential
-            let both = concatenate![Axis(0), potential, potential];
-            self.sector.lowest_configurations(both.view(), count)
+            concatenate![Axis(0), potential, potential].into()
         } else {
-            self.sector.lowest_configurations(potential, count)
+            potential.into()
         }
     }
 
     /// The point of the polytope that a line-up stands for; it minimises `<potential, n>`.
     pub fn minimiser(&self, potential: ArrayView2<'_, f64>) -> Result<Array2<f64>> {
+        let energies = self.energies(potential);
         let mut weighted = self
-            .line_up(potential)?
-            .weighted_occupations(self.weights.as_slice());
-        // the weights sum to one but for rounding
-        weighted /= self.weights.as_slice().iter().sum::<f64>();
+            .sector
+            .lowest_mixture(energies.view(), self.weights.as_slice())?;
+        weighted /= self.total;
         Ok(if self.domain == Domain::SpinSummed {
             weighted.sum_axis(Axis(0)).insert_axis(Axis(0))
         } else {

@@ -1,30 +1,34 @@
-//! The r configurations of lowest one-particle energy, by best-first search.
-//!
-//! With the modes sorted by energy, the configurations of one spin component are the partitions
-//! in a box: row i is how far particle i, counted from the highest, stands above its place in
-//! the lowest configuration. Adding a box raises one particle to the next mode, so energies
-//! grow along the Gale order. Each partition has one parent (remove a box from its last row),
-//! hence at most two children, and the search needs no record of what was visited: r steps of
-//! O(log r), whatever the numbers of particles and modes. Pairs of two such streams serve
-//! spin-1/2.
+//! The r configurations of lowest one-particle energy: by best-first search, and many of them by
+//! lists of holes and particles.
 
+use super::best_first::BestFirst;
 use super::configuration::Sector;
+use super::particle_hole::ParticleHole;
 use crate::error::{Error, Result};
 use crate::memory;
-use crate::weights::{CompensatedSum, compensated_sum};
 use ndarray::{Array2, Array3, ArrayView2};
 use num_bigint::BigUint;
-use std::cmp::{Ordering, Reverse};
-use std::collections::BinaryHeap;
 
 /// The lowest configurations in order of energy (equal energies in a fixed order).
 #[derive(Debug, Clone)]
 pub struct LowestConfigurations {
     energies: Vec<f64>,
-    streams: Vec<Stream>,
-    /// Node of each stream for each configuration.
-    nodes: Vec<[u32; 2]>,
+    source: Source,
 }
+
+/// How the configurations were found.
+#[derive(Debug, Clone)]
+enum Source {
+    Search(BestFirst),
+    ParticleHole {
+        lists: Box<ParticleHole>,
+        /// Sets of holes and of particles of each configuration.
+        pairs: Vec<[u32; 2]>,
+    },
+}
+
+/// Number of configurations from which lists of holes and particles are faster.
+const LISTS_FROM: usize = 1000;
 
 /// Nodes, candidates and queue entries, for each configuration found.
 const BYTES_PER_CONFIGURATION: u128 = 160;
@@ -40,6 +44,57 @@ impl Sector {
         energies: ArrayView2<'_, f64>,
         count: usize,
     ) -> Result<LowestConfigurations> {
+        self.check_request(energies, count)?;
+        if let Some(lists) = self.particle_hole(energies, count) {
+            let (energies, pairs) = lists.write_out();
+            let source = Source::ParticleHole {
+                lists: Box::new(lists),
+                pairs,
+            };
+            return Ok(LowestConfigurations { energies, source });
+        }
+        let (search, energies) = BestFirst::search(
+            energies,
+            &self.particles_by_spin(),
+            self.is_fermionic(),
+            count,
+        );
+        Ok(LowestConfigurations {
+            energies,
+            source: Source::Search(search),
+        })
+    }
+
+    /// Occupations `(spins, modes)` of the lowest configurations mixed with weights, one for
+    /// each, as [`LowestConfigurations::weighted_occupations`].
+    ///
+    /// # Errors
+    /// As for [`Sector::lowest_configurations`].
+    pub fn lowest_mixture(
+        &self,
+        energies: ArrayView2<'_, f64>,
+        weights: &[f64],
+    ) -> Result<Array2<f64>> {
+        self.check_request(energies, weights.len())?;
+        Ok(match self.particle_hole(energies, weights.len()) {
+            Some(lists) => lists.mixed_occupations(weights),
+            None => self
+                .lowest_configurations(energies, weights.len())?
+                .weighted_occupations(weights),
+        })
+    }
+
+    /// The quicker way to many configurations, where there is one.
+    fn particle_hole(&self, energies: ArrayView2<'_, f64>, count: usize) -> Option<ParticleHole> {
+        match self {
+            Sector::Fermions { particles, .. } if count >= LISTS_FROM => {
+                ParticleHole::lowest(&energies.row(0).to_vec(), *particles, count)
+            }
+            _ => None,
+        }
+    }
+
+    fn check_request(&self, energies: ArrayView2<'_, f64>, count: usize) -> Result<()> {
         const ARGUMENT: &str = "one_particle_energies";
         if energies.dim() != (self.spins(), self.modes()) {
             return Err(Error::argument(
@@ -70,53 +125,11 @@ impl Sector {
         memory::require(
             format!("the search for the {count} lowest configurations"),
             count as u128 * BYTES_PER_CONFIGURATION,
-        )?;
-        let streams: Vec<Stream> = energies
-            .rows()
-            .into_iter()
-            .zip(self.particles_by_spin())
-            .map(|(row, particles)| Stream::new(&row.to_vec(), particles, self.is_fermionic()))
-            .collect();
-        Ok(LowestConfigurations::search(streams, count))
+        )
     }
 }
 
 impl LowestConfigurations {
-    fn search(mut streams: Vec<Stream>, count: usize) -> Self {
-        let mut energies = Vec::with_capacity(count);
-        let mut nodes = Vec::with_capacity(count);
-        if let [only] = streams.as_mut_slice() {
-            for i in 0..count {
-                energies.push(only.energy(i).unwrap_or(f64::INFINITY));
-                nodes.push([i as u32, 0]);
-            }
-        } else {
-            let mut queue = BinaryHeap::new();
-            push_pair(&mut queue, &mut streams, [0, 0]);
-            while energies.len() < count {
-                let Some(Reverse(Keyed {
-                    energy,
-                    order: [i, j],
-                })) = queue.pop()
-                else {
-                    break;
-                };
-                energies.push(energy);
-                nodes.push([i, j]);
-                push_pair(&mut queue, &mut streams, [i, j + 1]);
-                // a new first index enters once, with the lowest second one
-                if j == 0 {
-                    push_pair(&mut queue, &mut streams, [i + 1, 0]);
-                }
-            }
-        }
-        LowestConfigurations {
-            energies,
-            streams,
-            nodes,
-        }
-    }
-
     /// Energies, increasing.
     pub fn energies(&self) -> &[f64] {
         &self.energies
@@ -124,262 +137,20 @@ impl LowestConfigurations {
 
     /// Occupations `(count, spins, modes)`.
     pub fn occupations(&self) -> Array3<u32> {
-        let modes = self.streams.first().map_or(0, |stream| stream.order.len());
-        let mut result = Array3::zeros((self.nodes.len(), self.streams.len(), modes));
-        for (spin, stream) in self.streams.iter().enumerate() {
-            let all = stream.all_occupations();
-            for (k, node) in self.nodes.iter().enumerate() {
-                result
-                    .slice_mut(ndarray::s![k, spin, ..])
-                    .assign(&all.row(node[spin] as usize));
-            }
+        match &self.source {
+            Source::Search(search) => search.occupations(),
+            Source::ParticleHole { lists, pairs } => lists.occupations(pairs),
         }
-        result
     }
 
     /// Occupations `(spins, modes)` of the configurations mixed with the given weights, without
     /// writing out any configuration: O(count + modes).
     pub fn weighted_occupations(&self, weights: &[f64]) -> Array2<f64> {
-        debug_assert_eq!(weights.len(), self.nodes.len());
-        let modes = self.streams.first().map_or(0, |stream| stream.order.len());
-        let mut result = Array2::zeros((self.streams.len(), modes));
-        // one total for all components, so that filled modes do not differ by rounding
-        let total = compensated_sum(weights);
-        for (spin, stream) in self.streams.iter().enumerate() {
-            let mut marginal = vec![0.0; stream.found.len()];
-            for (node, weight) in self.nodes.iter().zip(weights) {
-                marginal[node[spin] as usize] += weight;
-            }
-            let mixed = stream.mixed_occupations(marginal, total);
-            result
-                .row_mut(spin)
-                .assign(&ndarray::ArrayView1::from(&mixed));
+        debug_assert_eq!(weights.len(), self.energies.len());
+        match &self.source {
+            Source::Search(search) => search.mixed_occupations(weights),
+            Source::ParticleHole { lists, .. } => lists.mixed_occupations(weights),
         }
-        result
-    }
-}
-
-/// An entry of a priority queue: by energy, then by a fixed order.
-#[derive(Debug, Clone, Copy)]
-struct Keyed<K> {
-    energy: f64,
-    order: K,
-}
-
-impl<K: Ord> Ord for Keyed<K> {
-    fn cmp(&self, other: &Self) -> Ordering {
-        self.energy
-            .total_cmp(&other.energy)
-            .then_with(|| self.order.cmp(&other.order))
-    }
-}
-
-impl<K: Ord> PartialOrd for Keyed<K> {
-    fn partial_cmp(&self, other: &Self) -> Option<Ordering> {
-        Some(self.cmp(other))
-    }
-}
-
-impl<K: Ord> PartialEq for Keyed<K> {
-    fn eq(&self, other: &Self) -> bool {
-        self.cmp(other) == Ordering::Equal
-    }
-}
-
-impl<K: Ord> Eq for Keyed<K> {}
-
-fn push_pair(
-    queue: &mut BinaryHeap<Reverse<Keyed<[u32; 2]>>>,
-    streams: &mut [Stream],
-    pair: [u32; 2],
-) {
-    let [up, down] = streams else { return };
-    if let (Some(a), Some(b)) = (up.energy(pair[0] as usize), down.energy(pair[1] as usize)) {
-        queue.push(Reverse(Keyed {
-            energy: a + b,
-            order: pair,
-        }));
-    }
-}
-
-const NO_PARENT: u32 = u32::MAX;
-
-/// A partition: its last row, and how it came about.
-#[derive(Debug, Clone, Copy)]
-struct Node {
-    energy: f64,
-    parent: u32,
-    /// Sorted mode that the last added box left; the particle went to the next one.
-    from: u32,
-    row: u32,
-    length: u32,
-    /// Length of the row before the last.
-    previous: u32,
-}
-
-/// The configurations of one spin component in order of energy, found as they are asked for.
-#[derive(Debug, Clone)]
-struct Stream {
-    /// Modes by increasing energy.
-    order: Vec<usize>,
-    /// Their energies.
-    sorted: Vec<f64>,
-    particles: usize,
-    /// Fermions: particle i starts i modes below the highest; bosons: all start at the bottom.
-    fermionic: bool,
-    longest_row: u32,
-    found: Vec<Node>,
-    queue: BinaryHeap<Reverse<Keyed<u32>>>,
-    /// Partitions pushed so far, in the order of pushing.
-    candidates: Vec<Node>,
-}
-
-impl Stream {
-    fn new(energies: &[f64], particles: usize, fermionic: bool) -> Self {
-        let mut order: Vec<usize> = (0..energies.len()).collect();
-        order.sort_by(|&a, &b| energies[a].total_cmp(&energies[b]).then(a.cmp(&b)));
-        let sorted: Vec<f64> = order.iter().map(|&mode| energies[mode]).collect();
-        let longest_row = if fermionic {
-            sorted.len() - particles
-        } else {
-            sorted.len() - 1
-        } as u32;
-        let energy = if fermionic {
-            sorted[..particles].iter().sum()
-        } else {
-            particles as f64 * sorted[0]
-        };
-        let mut stream = Stream {
-            order,
-            sorted,
-            particles,
-            fermionic,
-            longest_row,
-            found: Vec::new(),
-            queue: BinaryHeap::new(),
-            candidates: Vec::new(),
-        };
-        stream.push(Node {
-            energy,
-            parent: NO_PARENT,
-            from: 0,
-            row: 0,
-            length: 0,
-            previous: longest_row,
-        });
-        stream
-    }
-
-    /// Energy of the `index`-th lowest configuration, if there are so many.
-    fn energy(&mut self, index: usize) -> Option<f64> {
-        while self.found.len() <= index {
-            let Reverse(Keyed { order, .. }) = self.queue.pop()?;
-            let node = self.candidates[order as usize];
-            let parent = self.found.len() as u32;
-            self.found.push(node);
-            self.push_children(parent, node);
-        }
-        Some(self.found[index].energy)
-    }
-
-    fn push(&mut self, node: Node) {
-        self.queue.push(Reverse(Keyed {
-            energy: node.energy,
-            order: self.candidates.len() as u32,
-        }));
-        self.candidates.push(node);
-    }
-
-    fn push_children(&mut self, parent: u32, node: Node) {
-        let empty = node.length == 0;
-        if !empty && node.length < node.previous {
-            self.push_box(parent, node, node.row, node.length, node.previous);
-        }
-        let next_row = if empty { 0 } else { node.row + 1 };
-        let room = if empty { self.longest_row } else { node.length };
-        if (next_row as usize) < self.particles && room > 0 {
-            self.push_box(parent, node, next_row, 0, room);
-        }
-    }
-
-    /// The child with one more box in `row`, which had `length` of at most `previous` boxes.
-    fn push_box(&mut self, parent: u32, node: Node, row: u32, length: u32, previous: u32) {
-        let start = if self.fermionic {
-            self.particles - 1 - row as usize
-        } else {
-            0
-        };
-        let from = start + length as usize;
-        self.push(Node {
-            energy: node.energy + (self.sorted[from + 1] - self.sorted[from]),
-            parent,
-            from: from as u32,
-            row,
-            length: length + 1,
-            previous,
-        });
-    }
-
-    /// Occupations of the sorted modes in the lowest configuration.
-    fn ground_occupations(&self) -> Vec<u32> {
-        let mut occupations = vec![0; self.sorted.len()];
-        if self.fermionic {
-            occupations[..self.particles].fill(1);
-        } else {
-            occupations[0] = self.particles as u32;
-        }
-        occupations
-    }
-
-    /// Occupations `(found, modes)`, each from its parent's by one raised particle.
-    fn all_occupations(&self) -> Array2<u32> {
-        let mut result = Array2::zeros((self.found.len(), self.order.len()));
-        let ground = self.ground_occupations();
-        for (k, node) in self.found.iter().enumerate() {
-            if node.parent == NO_PARENT {
-                for (level, &mode) in self.order.iter().enumerate() {
-                    result[[k, mode]] = ground[level];
-                }
-                continue;
-            }
-            let (done, mut rest) = result.view_mut().split_at(ndarray::Axis(0), k);
-            let mut row = rest.row_mut(0);
-            row.assign(&done.row(node.parent as usize));
-            row[self.order[node.from as usize]] -= 1;
-            row[self.order[node.from as usize + 1]] += 1;
-        }
-        result
-    }
-
-    /// sum_k weights[k] x occupations of configuration k; each box counts for all descendants.
-    fn mixed_occupations(&self, mut weights: Vec<f64>, total: f64) -> Vec<f64> {
-        // what passes from each sorted mode to the next
-        let mut flows = vec![CompensatedSum::default(); self.sorted.len()];
-        // descendants come after their parents, so a backward pass has complete sums
-        for (k, node) in self.found.iter().enumerate().rev() {
-            if node.parent == NO_PARENT {
-                continue;
-            }
-            let weight = weights[k];
-            weights[node.parent as usize] += weight;
-            flows[node.from as usize].add(weight);
-        }
-        let mut levels: Vec<f64> = self
-            .ground_occupations()
-            .iter()
-            .map(|&n| f64::from(n) * total)
-            .collect();
-        for (level, flow) in flows.iter().map(CompensatedSum::value).enumerate() {
-            levels[level] -= flow;
-            if let Some(next) = levels.get_mut(level + 1) {
-                *next += flow;
-            }
-        }
-        let mut occupations = vec![0.0; levels.len()];
-        for (level, &mode) in self.order.iter().enumerate() {
-            occupations[mode] = levels[level];
-        }
-        occupations
     }
 }
 
@@ -452,6 +223,81 @@ mod tests {
         assert!(lowest.energies().windows(2).all(|w| w[0] <= w[1]));
         let sum = lowest.weighted_occupations(&vec![1e-4; 10_000]).sum();
         assert_abs_diff_eq!(sum, 50.0, epsilon = 1e-9);
+    }
+
+    /// Energies one by one, distinct configurations with these energies, and their mixture.
+    fn assert_lists_agree_with_search(h: &Array2<f64>, particles: usize, count: usize) {
+        let row = h.row(0).to_vec();
+        let Some(lists) = ParticleHole::lowest(&row, particles, count) else {
+            panic!("{particles} particles, {count} configurations, energies {row:?}");
+        };
+        let (energies, pairs) = lists.write_out();
+        let (search, expected) = BestFirst::search(h.view(), &[particles], true, count);
+        assert_eq!(energies.len(), count);
+        let mut seen = std::collections::HashSet::new();
+        let weights: Vec<f64> = (0..count).map(|k| (2 * count - k) as f64).collect();
+        let sum: f64 = weights.iter().sum();
+        let mut mixed = Array2::zeros(h.dim());
+        for (k, n) in lists.occupations(&pairs).outer_iter().enumerate() {
+            assert_eq!(n.sum() as usize, particles);
+            let energy: f64 = n.iter().zip(h).map(|(&n, e)| f64::from(n) * e).sum();
+            assert_abs_diff_eq!(energy, energies[k], epsilon = 1e-11);
+            assert_abs_diff_eq!(expected[k], energies[k], epsilon = 1e-11);
+            mixed = mixed + n.mapv(f64::from) * (weights[k] / sum);
+            assert!(seen.insert(n.iter().copied().collect::<Vec<u32>>()));
+        }
+        assert!(energies.windows(2).all(|pair| pair[0] <= pair[1]));
+        let weights: Vec<f64> = weights.iter().map(|w| w / sum).collect();
+        let direct = lists.mixed_occupations(&weights);
+        assert_abs_diff_eq!(direct, mixed, epsilon = 1e-12);
+        // where degeneracies leave a choice, the energies agree
+        let other = (search.mixed_occupations(&weights) * h).sum();
+        assert_abs_diff_eq!((&direct * h).sum(), other, epsilon = 1e-11);
+    }
+
+    #[test]
+    fn lists_of_holes_and_particles_agree_with_the_search() {
+        let mut generator = ChaCha8Rng::seed_from_u64(2);
+        for (modes, particles, counts) in [
+            (12, 5, vec![1, 2, 30, 791, 792]),
+            (14, 7, vec![1000, 3432]),
+            (9, 0, vec![1]),
+            (9, 9, vec![1]),
+            (9, 1, vec![1, 4, 9]),
+            (9, 8, vec![1, 4, 9]),
+            (60, 30, vec![1000, 20_000, 40_000]),
+            (60, 3, vec![34_219, 34_220]),
+        ] {
+            for steps in [f64::INFINITY, 3.0, 20.0] {
+                let h = Array2::from_shape_fn((1, modes), |(_, m)| {
+                    let e: f64 = generator.random();
+                    let e = e - 0.5 + 0.1 * m as f64;
+                    if steps.is_finite() {
+                        (steps * e).floor() / 7.0
+                    } else {
+                        e
+                    }
+                });
+                for &count in &counts {
+                    assert_lists_agree_with_search(&h, particles, count);
+                }
+            }
+        }
+        // one large multiplet, cut at its end
+        let h = Array2::from_shape_fn((1, 30), |(_, m)| f64::from(u8::from(m >= 15)));
+        assert_lists_agree_with_search(&h, 15, 2000);
+        let whole = Array2::from_shape_fn((1, 12), |_| 0.25);
+        assert_lists_agree_with_search(&whole, 6, 100);
+    }
+
+    #[test]
+    fn multiplets_with_long_lists_are_left_to_the_search() {
+        let h = vec![0.5; 60];
+        assert!(ParticleHole::lowest(&h, 30, 1000).is_none());
+        let sector = Sector::fermions(60, 30).unwrap();
+        let h = Array2::from_elem((1, 60), 0.5);
+        let lowest = sector.lowest_configurations(h.view(), 1000).unwrap();
+        assert!(lowest.energies().iter().all(|&e| e == 15.0));
     }
 
     #[test]

@@ -6,8 +6,12 @@
 //! modes of fermions, or mode + index of the sorted particles of bosons, so that one ranking
 //! (colexicographic, the combinatorial number system) numbers both.
 
+mod best_first;
+mod bucket_sort;
 mod configuration;
+mod excitation_lists;
 mod lowest;
+mod particle_hole;
 mod ranking;
 
 pub use configuration::{Configurations, Sector};
