@@ -30,6 +30,8 @@ pub(super) fn decompose(point: &[f64], values: &[f64], links: &[bool]) -> Vec<Pe
         let shift = excess / span.len() as f64;
         rest[span].iter_mut().for_each(|z| *z -= shift);
     }
+    // sums over a facet have about this many rounding errors
+    let terms = point.len().max(16) as f64;
     let mut mass = 1.0;
     let mut result: Vec<Permuted> = Vec::new();
     for _ in 0..=point.len() {
@@ -39,7 +41,7 @@ pub(super) fn decompose(point: &[f64], values: &[f64], links: &[bool]) -> Vec<Pe
             block.match_order(&rest, &mut order, &mut direction, values);
         }
         let farthest = direction.iter().fold(0.0f64, |m, d| m.max(d.abs()));
-        let rounding = 16.0 * f64::EPSILON * scale / mass;
+        let rounding = terms * f64::EPSILON * scale / mass;
         if farthest <= rounding {
             result.push(Permuted {
                 probability: mass,
