@@ -10,6 +10,8 @@ use crate::error::Result;
 const SMOOTHING: f64 = 0.75;
 /// Number of weights from which the query direction is smoothed.
 const SMOOTHING_FROM: usize = 100;
+/// Number of weights from which all queries are.
+const ALWAYS_FROM: usize = 1000;
 /// Queries that bring nothing before rounding is held responsible.
 const PATIENCE: usize = 25;
 /// Relative changes of the bounds that count as progress.
@@ -73,6 +75,7 @@ struct Stall {
     length: f64,
     lower: f64,
     gap: f64,
+    bracket: f64,
     idle: usize,
 }
 
@@ -82,6 +85,7 @@ impl Default for Stall {
             length: f64::INFINITY,
             lower: 0.0,
             gap: f64::INFINITY,
+            bracket: f64::INFINITY,
             idle: 0,
         }
     }
@@ -89,15 +93,19 @@ impl Default for Stall {
 
 impl Stall {
     /// Queries since the last that shortened the normal, raised the lower bound or narrowed
-    /// the gap.
+    /// the gap or the distance between the bounds.
     fn count(&mut self, length: f64, lower: f64, gap: f64) -> usize {
         let better = length < self.length * (1.0 - PROGRESS)
             || lower > self.lower + PROGRESS * length
-            || gap.abs() < 0.9 * self.gap;
+            || gap.abs() < 0.9 * self.gap
+            || length - lower < 0.9 * self.bracket;
         self.idle = if better { 0 } else { self.idle + 1 };
         self.length = self.length.min(length);
         self.lower = self.lower.max(lower);
         self.gap = self.gap.min(gap.abs());
+        if better {
+            self.bracket = self.bracket.min(length - lower);
+        }
         self.idle
     }
 }
@@ -138,6 +146,7 @@ impl<'a> Search<'a> {
     /// Alternates until the gap is small enough or rounding forbids more.
     pub fn run(mut self) -> Result<Found> {
         let smooth = self.oracle.weights.count() >= SMOOTHING_FROM;
+        let very_smooth = self.oracle.weights.count() >= ALWAYS_FROM;
         let floor = 8.0 * f64::EPSILON * self.set.scale() * (self.target.len() as f64).sqrt();
         let mut converged = false;
         let mut exact = true;
@@ -150,7 +159,14 @@ impl<'a> Search<'a> {
                 break;
             }
             let goal = self.options.largest_gap(length);
-            exact |= !smooth || self.lower <= 0.0 || (length - self.lower) * length <= 2.0 * goal;
+            let bracket = (length - self.lower) * (length + self.lower);
+            if very_smooth && bracket <= goal {
+                converged = true;
+                break;
+            }
+            // for very many weights the smoothed queries stay ahead to the end
+            let last = !very_smooth && (length - self.lower) * length <= 2.0 * goal;
+            exact |= !smooth || self.lower <= 0.0 || last;
             let query = self.query(exact);
             let point = self.oracle.flat_minimiser(&query)?;
             self.calls += 1;

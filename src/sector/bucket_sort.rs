@@ -10,6 +10,9 @@ pub(super) struct Entry<T> {
 /// So many entries or fewer are inserted one by one.
 const FEW: usize = 24;
 
+/// 2^52: added to a smaller number, it leaves the nearest integer in the lowest bits.
+const INTEGER: f64 = 4_503_599_627_370_496.0;
+
 /// Sorts finite energies; keeps its memory from one time to the next.
 #[derive(Debug)]
 pub(super) struct Sorter<T> {
@@ -38,21 +41,24 @@ impl<T: Copy> Sorter<T> {
             .fold((f64::INFINITY, f64::NEG_INFINITY), |(low, high), entry| {
                 (low.min(entry.energy), high.max(entry.energy))
             });
-        let buckets = 2 * entries.len();
+        let buckets = entries.len();
         let scale = (buckets - 1) as f64 / (highest - lowest);
         if !scale.is_finite() {
             entries.sort_by(|a, b| a.energy.total_cmp(&b.energy));
             return;
         }
         // increases with the energy, so that the buckets are in order
-        let bucket = |entry: &Entry<T>| ((entry.energy - lowest) * scale) as usize;
+        let bucket = |entry: &Entry<T>| {
+            ((entry.energy - lowest) * scale + INTEGER).to_bits() as u32 as usize
+        };
         self.ends.clear();
         self.ends.resize(buckets, 0);
         for entry in entries.iter() {
             self.ends[bucket(entry)] += 1;
         }
-        let mut sum = 0;
+        let (mut sum, mut fullest) = (0, 0);
         for end in &mut self.ends {
+            fullest = fullest.max(*end);
             sum += std::mem::replace(end, sum);
         }
         self.unsorted.clear();
@@ -62,19 +68,22 @@ impl<T: Copy> Sorter<T> {
             entries[*place as usize] = *entry;
             *place += 1;
         }
-        let mut start = 0;
-        for &end in &self.ends {
-            insert_in_order(&mut entries[start..end as usize]);
-            start = end as usize;
+        if fullest as usize > FEW {
+            let mut start = 0;
+            for &end in &self.ends {
+                let within = &mut entries[start..end as usize];
+                if within.len() > FEW {
+                    within.sort_by(|a, b| a.energy.total_cmp(&b.energy));
+                }
+                start = end as usize;
+            }
         }
+        insert_in_order(entries);
     }
 }
 
+/// Quick where little is out of order.
 fn insert_in_order<T: Copy>(entries: &mut [Entry<T>]) {
-    if entries.len() > FEW {
-        entries.sort_by(|a, b| a.energy.total_cmp(&b.energy));
-        return;
-    }
     for i in 1..entries.len() {
         let entry = entries[i];
         let mut place = i;
@@ -83,5 +92,38 @@ fn insert_in_order<T: Copy>(entries: &mut [Entry<T>]) {
             place -= 1;
         }
         entries[place] = entry;
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+    use rand::{Rng, SeedableRng};
+    use rand_chacha::ChaCha8Rng;
+
+    #[test]
+    fn sorting_is_stable_for_even_uneven_and_equal_energies() {
+        let mut generator = ChaCha8Rng::seed_from_u64(3);
+        let mut sorter = Sorter::default();
+        for size in [0, 1, 2, 25, 1000] {
+            for kind in 0..4 {
+                let mut entries: Vec<Entry<usize>> = (0..size)
+                    .map(|label| {
+                        let x: f64 = generator.random();
+                        let energy = match kind {
+                            0 => x,
+                            1 => (5.0 * x).floor(),
+                            2 => x.powi(60),
+                            _ => 7.0,
+                        };
+                        Entry { energy, label }
+                    })
+                    .collect();
+                let mut expected = entries.clone();
+                expected.sort_by(|a, b| a.energy.total_cmp(&b.energy));
+                sorter.sort(&mut entries);
+                assert_eq!(entries, expected);
+            }
+        }
     }
 }

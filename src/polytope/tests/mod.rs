@@ -317,6 +317,34 @@ fn many_weights_are_certified() {
 }
 
 #[test]
+fn smooth_occupations_are_certified_for_many_weights() {
+    let count = 3000;
+    let raw: Vec<f64> = (0..count).map(|j| f64::from(2 * count - j)).collect();
+    let sum: f64 = raw.iter().sum();
+    let weights = Weights::new(&raw.iter().map(|w| w / sum).collect::<Vec<_>>()).unwrap();
+    let sector = Sector::fermions(40, 20).unwrap();
+    let polytope = ExclusionPolytope::new(sector, weights, Domain::Spinless).unwrap();
+    let mut generator = generator(7);
+    let smooth = noise(&mut generator, (1, 40)) * 0.02
+        + Array2::from_shape_fn((1, 40), |(_, m)| {
+            1.0 / (1.0 + ((m as f64 - 19.5) / 0.9).exp())
+        });
+    let projection = project(&polytope, &smooth);
+    let tolerance = ProjectionOptions::default().point_tolerance;
+    assert!(projection.converged, "{projection:?}");
+    assert!(projection.distance > 0.01);
+    assert!(projection.gap <= tolerance * tolerance);
+    assert!(projection.distance - projection.distance_lower < 1e-11);
+    // the bound belongs to a direction, and the point to an ensemble
+    let (value, _) = polytope.support(projection.normal.view()).unwrap();
+    let norm = length(&projection.normal);
+    let bound = (value - (&projection.normal * &smooth).sum()) / norm;
+    assert!(bound > projection.distance - 1e-8 && bound < projection.distance + 1e-13);
+    let ensemble = projection.ensemble().occupations().unwrap();
+    assert!(length(&(ensemble - &projection.occupations)) < 1e-12);
+}
+
+#[test]
 fn bad_input_is_refused() {
     let weights = Weights::new(&[0.6, 0.4]).unwrap();
     let fermions = Sector::fermions(4, 2).unwrap();
