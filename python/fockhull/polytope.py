@@ -195,7 +195,7 @@ class ExclusionPolytope:
         ConvergenceError
             If the distance is not certified to 1e-9 or the point to 5e-6 (`result` is the
             partial result). Usually both reach rounding level; the `gap` of the result says
-            how far they are certified, which for r = 100000 can be 1e-6 for the point.
+            how far they are certified, which for r = 100000 is about 2e-7 for the point.
         """
         values, lead, orbitals = self._points(density_matrix, occupations)
         with _refusing(orbitals):

@@ -294,6 +294,8 @@ mod tests {
     fn multiplets_with_long_lists_are_left_to_the_search() {
         let h = vec![0.5; 60];
         assert!(ParticleHole::lowest(&h, 30, 1000).is_none());
+        let huge: Vec<f64> = (0..60).map(|m| 1e307 * f64::from(m - 30)).collect();
+        assert!(ParticleHole::lowest(&huge, 30, 1000).is_none());
         let sector = Sector::fermions(60, 30).unwrap();
         let h = Array2::from_elem((1, 60), 0.5);
         let lowest = sector.lowest_configurations(h.view(), 1000).unwrap();

@@ -173,6 +173,9 @@ fn enumerate(holes: &[f64], raised: &[f64], count: usize) -> Option<(Lists, Brac
     let most = count + 1000;
     u32::try_from(most).ok()?;
     let width = holes.iter().chain(raised).fold(0.0f64, |m, &e| m.max(e));
+    if !(width * (holes.len() + raised.len()) as f64).is_finite() {
+        return None;
+    }
     let gap = holes.first().unwrap_or(&0.0) + raised.first().unwrap_or(&0.0);
     let mut limit = (2.0 * gap).max(1e-3 * width);
     let mut bracket = Bracket {
