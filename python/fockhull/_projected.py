@@ -23,7 +23,7 @@ class Projected:
     distance: RealArray
     distance_lower: RealArray
     gap: RealArray
-    converged: list[bool]
+    converged: npt.NDArray[np.bool_]
     ensembles: tuple[Any, ...]
 
     @classmethod
@@ -36,7 +36,7 @@ class Projected:
             found.distance[chosen],
             found.distance_lower[chosen],
             found.gap[chosen],
-            [found.converged[index] for index in chosen],
+            found.converged[chosen],
             tuple(found.ensemble(index) for index in chosen),
         )
 

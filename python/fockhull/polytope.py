@@ -41,9 +41,10 @@ class ExclusionPolytope:
     with :math:`\epsilon_{(j)}(h)` the j-th lowest configuration energy for one-particle
     energies h. Convex, invariant under permutations of modes; for one weight and fermions it
     is Pauli's exclusion principle. A density matrix is allowed exactly when its occupations lie
-    in it. Nothing is enumerated: the methods rest on the r lowest configurations, so r = 100000
-    and 100 modes are fine. (Phys. Rev. Lett. 127, 023001 (2021); Ann. Henri Poincare 24, 2241
-    (2023); bosons arXiv:2204.12715; fixed spin Quantum 9, 1921 (2025).)
+    in it. The methods rest on the r lowest configurations, so r = 100000 and 100 modes are fine;
+    the list of inequalities is made where it is short and pays, see `project`. (Phys. Rev. Lett.
+    127, 023001 (2021); Ann. Henri Poincare 24, 2241 (2023); bosons arXiv:2204.12715; fixed spin
+    Quantum 9, 1921 (2025).)
 
     Parameters
     ----------
@@ -179,6 +180,12 @@ class ExclusionPolytope:
         particle number is corrected as well: the excess is taken off uniformly over the modes,
         which contributes ``|sum - N| / sqrt(d)`` to the distance (in quadrature).
 
+        Of two methods the faster is taken, for `contains` and `distance` too. The complete list
+        of inequalities serves if it is known already (from `inequalities` or an earlier batch),
+        and is made if r <= 12 and the generating vertices are no more than the points of the
+        batch. Otherwise the oracle of the r lowest configurations serves. Both give the same
+        answer within their certificates, not to the last digit.
+
         Parameters
         ----------
         density_matrix, occupations
@@ -203,7 +210,7 @@ class ExclusionPolytope:
         result = Projection(self, core, lead, orbitals)
         bracket = core.distance - core.distance_lower
         loose = (core.gap > ACCEPTED_GAP) | (bracket > ACCEPTED_BRACKET)
-        if (~np.array(core.converged, dtype=bool) & loose).any():
+        if (~core.converged & loose).any():
             raise ConvergenceError(
                 f"the projection reached a gap of {core.gap.max():.2e} only; the partial result "
                 "is this exception's `result`",
@@ -276,7 +283,7 @@ class ExclusionPolytope:
         n1 + n2 + n3 <= N - 1 + w1 = 2.6
         """
         if self._inequalities is None:
-            core = self._line_ups(limit).inequalities()
+            core = self._core.inequalities(self._limit(limit))
             self._inequalities = tuple(Inequality._wrap(one, self.shape) for one in core)
         return self._inequalities
 
@@ -331,7 +338,10 @@ class ExclusionPolytope:
         return TightestInequality(nearest, float(nearest.slack(point)))
 
     def _line_ups(self, limit: int | None) -> _core.LineUps:
-        return self._core.line_ups(None if limit is None else arguments.count("limit", limit))
+        return self._core.line_ups(self._limit(limit))
+
+    def _limit(self, limit: int | None) -> int | None:
+        return None if limit is None else arguments.count("limit", limit)
 
     def _nearest(self, inequalities: tuple[Inequality, ...], point: RealArray) -> Inequality:
         distances = np.array([inequality.distance(point) for inequality in inequalities])

@@ -9,16 +9,19 @@
 //! of vertices or inequalities, so r = 100 000 is as good as r = 3. Occupations come as
 //! `(components, modes)`: one component, or spin up and spin down where these are resolved.
 //!
-//! Where lists are small enough they come exactly, in integers ([`LineUps`]).
+//! Where lists are small enough they come exactly, in integers ([`LineUps`]); batches of points
+//! are then projected by the list ([`ExclusionPolytope::project_batch`]).
 //!
 //! The polytope lies in the plane where each component sums to its particle number. The
 //! projection of occupations with another sum first removes the excess uniformly over the modes
 //! of the component, which adds |sum - N| / sqrt(d) to the distance in quadrature.
 
 mod active_set;
+mod batch;
 mod ensemble;
 mod exact;
 mod least_squares;
+mod listed;
 mod monotone;
 mod oracle;
 mod permutahedron;
@@ -29,6 +32,7 @@ mod stretch;
 #[cfg(test)]
 mod tests;
 
+pub use batch::{Projections, for_batch};
 pub use ensemble::{Ensemble, Term};
 pub use exact::{DEFAULT_LIMIT, GeneratingVertex, Inequality, LineUps};
 pub use oracle::Domain;
@@ -39,13 +43,16 @@ use crate::error::{Error, Result};
 use crate::progress::Monitor;
 use crate::sector::Sector;
 use crate::weights::Weights;
+use batch::Listing;
 use ndarray::{Array2, ArrayView2};
 use oracle::Oracle;
+use std::sync::Arc;
 
 /// The set of occupation numbers that ensembles with given weights can have.
 #[derive(Debug, Clone)]
 pub struct ExclusionPolytope {
     oracle: Oracle,
+    listing: Arc<Listing>,
 }
 
 impl ExclusionPolytope {
@@ -57,6 +64,7 @@ impl ExclusionPolytope {
     pub fn new(sector: Sector, weights: Weights, domain: Domain) -> Result<Self> {
         Ok(ExclusionPolytope {
             oracle: Oracle::new(sector, weights, domain)?,
+            listing: Arc::default(),
         })
     }
 
@@ -120,9 +128,7 @@ impl ExclusionPolytope {
     /// As for [`ExclusionPolytope::project`], or a tolerance that is not positive.
     pub fn contains(&self, occupations: ArrayView2<'_, f64>, tolerance: f64) -> Result<bool> {
         self.check_occupations(occupations)?;
-        if !(tolerance > 0.0 && tolerance.is_finite()) {
-            return Err(Error::argument("tol", tolerance, "a positive number"));
-        }
+        check_tolerance(tolerance)?;
         projection::is_within(&self.oracle, occupations, tolerance)
     }
 
@@ -163,10 +169,15 @@ impl ExclusionPolytope {
         Ok(())
     }
 
+    /// Magnitude beyond which numbers are no occupations.
+    fn largest_occupation(&self) -> f64 {
+        1e6 * self.sector().particles().max(1) as f64
+    }
+
     fn check_occupations(&self, occupations: ArrayView2<'_, f64>) -> Result<()> {
         const ARGUMENT: &str = "occupations";
         self.check(ARGUMENT, occupations)?;
-        let limit = 1e6 * self.sector().particles().max(1) as f64;
+        let limit = self.largest_occupation();
         match occupations.iter().find(|n| n.abs() > limit) {
             Some(n) => Err(Error::argument(
                 ARGUMENT,
@@ -176,4 +187,11 @@ impl ExclusionPolytope {
             None => Ok(()),
         }
     }
+}
+
+fn check_tolerance(tolerance: f64) -> Result<()> {
+    if !(tolerance > 0.0 && tolerance.is_finite()) {
+        return Err(Error::argument("tol", tolerance, "a positive number"));
+    }
+    Ok(())
 }

@@ -54,6 +54,11 @@ impl ProjectionOptions {
     pub(super) fn largest_gap(&self, length: f64) -> f64 {
         (self.point_tolerance * self.point_tolerance).min(self.distance_tolerance * length)
     }
+
+    /// Whether this length of the normal alone bounds the distance and the point well enough.
+    pub(super) fn is_negligible(&self, length: f64) -> bool {
+        length <= self.distance_tolerance.min(0.5 * self.point_tolerance)
+    }
 }
 
 /// The nearest point of the polytope, with its certificate.

@@ -175,13 +175,7 @@ impl<'a> Search<'a> {
             let rounding = 4.0 * f64::EPSILON * length * self.set.scale();
             if exact {
                 self.gap = Some(gap.max(0.0));
-                // the length itself bounds the distance
-                let inside = length
-                    <= self
-                        .options
-                        .distance_tolerance
-                        .min(0.5 * self.options.point_tolerance);
-                converged = gap <= goal || inside;
+                converged = gap <= goal || self.options.is_negligible(length);
                 if gap <= rounding || (converged && smooth) {
                     break;
                 }

@@ -2,21 +2,16 @@
 
 use super::door::{enter, enter_monitored, raise};
 use super::sector::Sector;
-use crate::error::{Error, Result};
+use crate::error::Error;
 use crate::polytope as core;
-use crate::polytope::{Domain, ProjectionOptions};
-use crate::progress::Progress;
+use crate::polytope::{Domain, ProjectionOptions, for_batch};
 use crate::weights::Weights;
-use numpy::ndarray::{Array1, Array2, Array3, Array4, ArrayView2, ArrayView3, Axis};
+use numpy::ndarray::{Array1, Array2, Array3, Array4, Axis};
 use numpy::{
     IntoPyArray, PyArray1, PyArray2, PyArray3, PyArray4, PyReadonlyArray1, PyReadonlyArray3,
+    ToPyArray,
 };
 use pyo3::prelude::*;
-use rayon::prelude::*;
-use std::ops::ControlFlow;
-
-/// Members of a batch handled between two looks at the signals.
-const BATCH: usize = 64;
 
 /// A polytope of the core.
 #[pyclass(frozen, module = "fockhull._core")]
@@ -48,7 +43,7 @@ pub struct Inequality {
 /// Projections of a batch.
 #[pyclass(frozen, module = "fockhull._core")]
 pub struct Projections {
-    inner: Vec<core::Projection>,
+    inner: core::Projections,
 }
 
 /// Numbers `(batch,)` and occupations `(batch, components, modes)`.
@@ -83,35 +78,6 @@ fn stacked<'a>(
 
 /// Occupations of the generating vertices and their line-ups.
 type Vertices<'py> = (Bound<'py, PyArray3<f64>>, Bound<'py, PyArray4<u32>>);
-
-/// Runs `work` for each member, in parallel, with looks at the signals in between.
-fn for_batch<T: Send>(
-    batch: ArrayView3<'_, f64>,
-    monitor: &mut (dyn FnMut(&Progress) -> ControlFlow<()> + '_),
-    work: impl Fn(ArrayView2<'_, f64>) -> Result<T> + Sync,
-) -> Result<Vec<T>> {
-    let mut results = Vec::with_capacity(batch.len_of(Axis(0)));
-    for part in batch.axis_chunks_iter(Axis(0), BATCH) {
-        let report = Progress {
-            stage: "polytope",
-            done: results.len(),
-            total: batch.len_of(Axis(0)),
-            products: results.len(),
-            residual: f64::NAN,
-        };
-        if monitor(&report).is_break() {
-            return Err(Error::Interrupted);
-        }
-        let done: Result<Vec<T>> = part
-            .outer_iter()
-            .collect::<Vec<_>>()
-            .into_par_iter()
-            .map(&work)
-            .collect();
-        results.extend(done?);
-    }
-    Ok(results)
-}
 
 #[pymethods]
 impl ExclusionPolytope {
@@ -153,6 +119,25 @@ impl ExclusionPolytope {
         Ok(LineUps { inner })
     }
 
+    /// The facet inequalities, sorted by the level at which they appear; at most `limit` line-ups.
+    #[pyo3(signature = (limit=None))]
+    fn inequalities(&self, py: Python<'_>, limit: Option<usize>) -> PyResult<Vec<Inequality>> {
+        let limit = limit.unwrap_or(core::DEFAULT_LIMIT);
+        let list = enter_monitored(py, None, |monitor| self.inner.inequalities(limit, monitor))?;
+        let wrapped = list.iter().map(|inequality| Inequality {
+            sentence: inequality.sentence(),
+            latex: inequality.latex(),
+            normal_length: inequality.normal_length(),
+            bound_constant: inequality.bound_constant,
+            bound_weights: inequality.bound_weights.clone(),
+            bound: inequality.bound,
+            first_level: inequality.first_level,
+            is_positivity: inequality.positivity,
+            coefficients: inequality.coefficients.to_pyarray(py).unbind(),
+        });
+        Ok(wrapped.collect())
+    }
+
     /// Values `(batch,)` and minimisers of the support function.
     fn support<'py>(
         &self,
@@ -177,7 +162,7 @@ impl ExclusionPolytope {
     ) -> PyResult<Bound<'py, PyArray1<bool>>> {
         let occupations = occupations.as_array();
         let inside = enter_monitored(py, None, |monitor| {
-            for_batch(occupations, monitor, |n| self.inner.contains(n, tolerance))
+            self.inner.contains_batch(occupations, tolerance, monitor)
         })?;
         Ok(inside.into_pyarray(py))
     }
@@ -191,7 +176,7 @@ impl ExclusionPolytope {
         let occupations = occupations.as_array();
         let options = ProjectionOptions::default();
         let inner = enter_monitored(py, None, |monitor| {
-            for_batch(occupations, monitor, |n| self.inner.project(n, &options))
+            self.inner.project_batch(occupations, &options, monitor)
         })?;
         Ok(Projections { inner })
     }
@@ -249,23 +234,6 @@ impl LineUps {
         })?;
         Ok((occupations.into_pyarray(py), line_ups.into_pyarray(py)))
     }
-
-    /// The facet inequalities, sorted by the level at which they appear.
-    fn inequalities(&self, py: Python<'_>) -> PyResult<Vec<Inequality>> {
-        let list = enter(py, || self.inner.inequalities())?;
-        let wrapped = list.into_iter().map(|inequality| Inequality {
-            sentence: inequality.sentence(),
-            latex: inequality.latex(),
-            normal_length: inequality.normal_length(),
-            bound_constant: inequality.bound_constant,
-            bound_weights: inequality.bound_weights,
-            bound: inequality.bound,
-            first_level: inequality.first_level,
-            is_positivity: inequality.positivity,
-            coefficients: inequality.coefficients.into_pyarray(py).unbind(),
-        });
-        Ok(wrapped.collect())
-    }
 }
 
 #[pymethods]
@@ -273,48 +241,45 @@ impl Projections {
     /// The nearest points.
     #[getter]
     fn occupations<'py>(&self, py: Python<'py>) -> Bound<'py, PyArray3<f64>> {
-        self.stack(|p| &p.occupations).into_pyarray(py)
+        self.inner.occupations.to_pyarray(py)
     }
 
     /// Nearest point minus what was projected.
     #[getter]
     fn normals<'py>(&self, py: Python<'py>) -> Bound<'py, PyArray3<f64>> {
-        self.stack(|p| &p.normal).into_pyarray(py)
+        self.inner.normals.to_pyarray(py)
     }
 
     /// Distances (upper bounds).
     #[getter]
     fn distance<'py>(&self, py: Python<'py>) -> Bound<'py, PyArray1<f64>> {
-        self.each(py, |p| p.distance)
+        self.inner.distances.to_pyarray(py)
     }
 
     /// Certified lower bounds of the distances.
     #[getter]
     fn distance_lower<'py>(&self, py: Python<'py>) -> Bound<'py, PyArray1<f64>> {
-        self.each(py, |p| p.distance_lower)
+        self.inner.distances_lower.to_pyarray(py)
     }
 
     /// Duality gaps.
     #[getter]
     fn gap<'py>(&self, py: Python<'py>) -> Bound<'py, PyArray1<f64>> {
-        self.each(py, |p| p.gap)
+        self.inner.gaps.to_pyarray(py)
     }
 
     /// Whether the tolerances were reached.
     #[getter]
-    fn converged(&self) -> Vec<bool> {
-        self.inner.iter().map(|p| p.converged).collect()
+    fn converged<'py>(&self, py: Python<'py>) -> Bound<'py, PyArray1<bool>> {
+        self.inner.converged.to_pyarray(py)
     }
 
     /// Probabilities and potentials of the line-ups, probabilities and permutations of modes of
     /// the ensemble of one member.
     fn ensemble<'py>(&self, py: Python<'py>, index: usize) -> PyResult<EnsembleParts<'py>> {
-        let Some(projection) = self.inner.get(index) else {
-            let expected = format!("less than {}", self.inner.len());
-            return Err(raise(py, &Error::index("index", index, expected)));
-        };
-        let ensemble = enter(py, || Ok(projection.ensemble()))?;
-        let shape = projection.occupations.dim();
+        let ensemble = enter(py, || self.inner.ensemble(index))?;
+        let (_, components, modes) = self.inner.occupations.dim();
+        let shape = (components, modes);
         let line_ups = ensemble.line_ups();
         let of_line_ups: Vec<f64> = line_ups.iter().map(|(p, _)| *p).collect();
         let potentials = stacked(line_ups.iter().map(|(_, h)| h), shape);
@@ -330,21 +295,5 @@ impl Projections {
             of_permutations.into_pyarray(py),
             orders.into_pyarray(py),
         ))
-    }
-}
-
-impl Projections {
-    fn each<'py>(
-        &self,
-        py: Python<'py>,
-        number: impl Fn(&core::Projection) -> f64,
-    ) -> Bound<'py, PyArray1<f64>> {
-        let values: Array1<f64> = self.inner.iter().map(number).collect();
-        values.into_pyarray(py)
-    }
-
-    fn stack(&self, rows: impl Fn(&core::Projection) -> &Array2<f64>) -> Array3<f64> {
-        let shape = self.inner.first().map_or((0, 0), |p| p.occupations.dim());
-        stacked(self.inner.iter().map(rows), shape)
     }
 }

@@ -7,6 +7,7 @@ matrices are generic and a failure is reproduced by what is printed.
 from __future__ import annotations
 
 import warnings
+from contextlib import suppress
 from typing import Any, NamedTuple
 
 import numpy as np
@@ -85,7 +86,12 @@ def polytopes(draw: st.DrawFn, most: int = 6) -> fh.ExclusionPolytope:
     domain = None
     if isinstance(sector, fh.SpinHalfFermions):
         domain = draw(st.sampled_from(["spin-resolved", "spin-summed"]))
-    return fh.ExclusionPolytope(sector, draw(weights_for(sector, most)), domain)
+    polytope = fh.ExclusionPolytope(sector, draw(weights_for(sector, most)), domain)
+    if draw(st.booleans()):
+        # points are then projected by the list, otherwise mostly by the oracle
+        with suppress(fh.errors.ArgumentError):
+            polytope.inequalities(limit=500)
+    return polytope
 
 
 def problem_of(sector: Any, rng: np.random.Generator, *, is_complex: bool) -> Problem:

@@ -1,6 +1,7 @@
 //! Checks against enumeration and against each other.
 
 mod inequalities;
+mod listed;
 mod stretching;
 
 use super::*;
