@@ -32,6 +32,9 @@ POLYTOPES = [
     for sector, domain in CASES
     for weights in ((1.0,), (0.6, 0.4), (0.5, 0.5), TIED, FALLING)
 ]
+# 88 inequalities, of which many are met
+STEEP = 0.7 ** np.arange(9)
+POLYTOPES.append((fh.Fermions(16, 8), tuple(STEEP / STEEP.sum()), None))
 
 
 def listing(sector: Any, weights: Any, domain: str | None) -> fh.ExclusionPolytope:

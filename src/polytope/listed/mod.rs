@@ -2,8 +2,9 @@
 //!
 //! The nearest decreasing occupations x to y with `<a_i, x>` <= b_i: rows enter by their violation,
 //! the worst first, and a dual active-set method ([`dual`]) finds the nearest point for those met
-//! so far. All rows are gone through for a few points side by side ([`rows`]); a point that is
-//! done makes room for the next, and none has influence on another.
+//! so far. Rows are gone through for a few points side by side ([`rows`]), those with few steps
+//! first, the others once these hold. A point that is done makes room for the next, and none has
+//! influence on another.
 //!
 //! The certificate needs no oracle: with multipliers lambda >= 0 every point n of the polytope
 //! has `<h, n>` >= -sum_i lambda_i b_i for h = x - y, so that the gap is sum_i lambda_i times the
@@ -40,6 +41,8 @@ pub(super) struct Targets<'a> {
 struct Lane {
     member: usize,
     busy: bool,
+    /// By how much the simple rows are violated, once that is no more than rounding.
+    simple: Option<f64>,
     point: Point,
     /// Occupations with their places in the caller's order.
     sorted: Vec<(f64, u32)>,
@@ -92,16 +95,29 @@ impl pulp::NullaryFnOnce for Task<'_> {
             lane.write_depths(&mut depths, k);
         }
         while lanes.iter().any(|lane| lane.busy) {
-            let (violations, worst) = rows.most_violated(&depths, &mut heights);
-            for (k, lane) in lanes.iter_mut().enumerate().filter(|(_, lane)| lane.busy) {
+            // the long way through the other rows is gone for all lanes together
+            let simple = lanes.iter().any(|lane| lane.busy && lane.simple.is_none());
+            let some = if simple { rows.simple() } else { rows.others() };
+            let (violations, worst) = rows.most_violated(some, &depths, &mut heights);
+            for (k, lane) in lanes.iter_mut().enumerate() {
+                if !lane.busy || (simple && lane.simple.is_some()) {
+                    continue;
+                }
                 let (violation, row) = (violations[k], worst[k] as usize);
                 // active rows hold but for rounding in the sums
-                let done = violation <= lane.point.rounding || lane.point.holds(row);
-                if done {
-                    self.finish(lane, violation.max(0.0));
-                }
-                if done || lane.point.take_in(rows, row) == Settled::No {
+                if violation <= lane.point.rounding || lane.point.holds(row) {
+                    let excess = violation.max(lane.simple.unwrap_or(0.0));
+                    lane.simple = Some(excess.max(0.0));
+                    if simple && !rows.others().is_empty() {
+                        continue;
+                    }
+                    self.finish(lane, excess.max(0.0));
                     self.load(lane, &mut waiting);
+                } else {
+                    lane.simple = None;
+                    if lane.point.take_in(rows, row) == Settled::No {
+                        self.load(lane, &mut waiting);
+                    }
                 }
                 lane.write_depths(&mut depths, k);
             }
@@ -121,6 +137,7 @@ impl Task<'_> {
             return;
         };
         lane.busy = true;
+        lane.simple = None;
         lane.member = *waiting;
         *waiting += 1;
         lane.sort(values, rows.modes);

@@ -5,10 +5,15 @@
 //! reads `<g, v>` <= room with an increasing g, and its violation is a distance.
 
 use crate::polytope::exact::Inequality;
+use std::ops::Range;
 
 /// Points looked at side by side when all inequalities are gone through.
 pub(super) const LANES: usize = 8;
 
+/// Lists that are not worth dividing.
+const SHORT: usize = 50;
+/// Most steps of rows that are tried before the others: they are met most often.
+const FEW_STEPS: usize = 2;
 /// Room at the centre below which a component has no freedom.
 const RIGID: f64 = 1e-12;
 
@@ -29,6 +34,8 @@ pub(super) struct Rows {
     starts: Vec<usize>,
     /// Position and height of each step.
     steps: Vec<(u32, f64)>,
+    /// Rows with few steps, which come first.
+    simple: usize,
 }
 
 /// The largest violation of each lane and the row it belongs to.
@@ -47,12 +54,16 @@ impl Rows {
             sums: Vec::new(),
             starts: vec![0],
             steps: Vec::new(),
+            simple: 0,
         };
-        // loops of equal length follow each other
+        // so that loops of equal length follow each other, too
         let mut sorted: Vec<&Inequality> = list.iter().collect();
         sorted.sort_by_key(|inequality| step_count(inequality));
         for inequality in sorted {
             rows.add(inequality, particles);
+            if list.len() <= SHORT || step_count(inequality) <= FEW_STEPS {
+                rows.simple = rows.room.len();
+            }
         }
         rows
     }
@@ -116,10 +127,25 @@ impl Rows {
         &self.steps[self.starts[row]..self.starts[row + 1]]
     }
 
-    /// Goes through all rows for a few points, one in each lane of `depths`; `heights` is used
+    /// The rows to try first,
+    pub fn simple(&self) -> Range<usize> {
+        0..self.simple
+    }
+
+    /// and the others.
+    pub fn others(&self) -> Range<usize> {
+        self.simple..self.room.len()
+    }
+
+    /// Goes through some rows for a few points, one in each lane of `depths`; `heights` is used
     /// for the partial sums of -v.
     #[inline(always)]
-    pub fn most_violated(&self, depths: &[[f64; LANES]], heights: &mut [[f64; LANES]]) -> Worst {
+    pub fn most_violated(
+        &self,
+        some: Range<usize>,
+        depths: &[[f64; LANES]],
+        heights: &mut [[f64; LANES]],
+    ) -> Worst {
         let mut sums = [0.0; LANES];
         for (height, depth) in heights.iter_mut().zip(depths) {
             for ((height, sum), v) in height.iter_mut().zip(&mut sums).zip(depth) {
@@ -128,7 +154,8 @@ impl Rows {
             }
         }
         let mut worst = ([f64::NEG_INFINITY; LANES], [0; LANES]);
-        for (row, (room, bounds)) in self.room.iter().zip(self.starts.windows(2)).enumerate() {
+        let bounds = self.starts[some.start..=some.end].windows(2);
+        for (row, (room, bounds)) in some.clone().zip(self.room[some].iter().zip(bounds)) {
             let mut violation = [-room; LANES];
             for &(position, step) in &self.steps[bounds[0]..bounds[1]] {
                 let height = &heights[position as usize];
