@@ -10,10 +10,14 @@ mod density_coupling;
 mod hamiltonian;
 mod hops;
 mod interaction;
+mod lanes;
 mod modes;
+mod parts;
 mod spaces;
 mod spin_half;
 mod split;
+#[cfg(test)]
+mod split_tests;
 mod stored;
 mod strings;
 mod symmetry;

@@ -23,9 +23,16 @@ impl<'a> HalfSpaces<'a> {
     /// # Errors
     /// [`crate::error::Error::TooManyConfigurations`] beyond 64-bit indices.
     pub fn new(whole: &'a ModeSpace) -> Result<Self> {
+        Self::split_at(whole, whole.modes() / 2)
+    }
+
+    /// Splits the modes after the first `low_modes`.
+    ///
+    /// # Errors
+    /// [`crate::error::Error::TooManyConfigurations`] beyond 64-bit indices.
+    pub fn split_at(whole: &'a ModeSpace, low_modes: usize) -> Result<Self> {
         let (modes, particles) = (whole.modes(), whole.particles());
         let fermionic = whole.is_fermionic();
-        let low_modes = modes / 2;
         let high_modes = modes - low_modes;
         let (fewest, most) = if fermionic {
             (

@@ -3,55 +3,73 @@
 //!
 //! Configurations with the same high part are neighbours in the colexicographic order: a
 //! segment of the vector for each high part, as long as there are low parts with the remaining
-//! particles. Segments with equally many low particles form a class, a matrix whose rows are
-//! high parts. Hops within the low modes act along its rows, hops within the high modes between
-//! its rows, hops across lead to the classes with one low particle more or less.
+//! particles. Segments with equally many low particles form a class. Hops within the low modes
+//! act along the segments, hops within the high modes add whole segments of the same class, hops
+//! across lead to the classes with one low particle more or less.
+//!
+//! Segments of one class, of several vectors if there are, are transposed into tiles of a few
+//! lanes for what acts along them. Products go through the vector from front to back, block by
+//! block, so that most segments hopped from are still in the cache.
 
-use super::modes::ModeOperator;
+use super::lanes::{
+    AddProduct, AddRows, AddRuns, LANES, Lane, LaneMatrix, OwnProduct, Place, TransposeIn,
+    TransposeOut,
+};
+use super::parts::{Block, Crossing, HighParts, Ladder, on_space};
 use super::spaces::HalfSpaces;
-use super::stored::SparseMatrix;
 use super::terms::ModeTerms;
-use super::tile::{WIDE, add_tile_product, multiply_tile, with_tile_width};
-use super::transpose::{Lane, transpose_in, transpose_out};
 use super::walker::ModeSpace;
 use crate::error::Result;
 use crate::scalar::Scalar;
-use ndarray::{Array1, Array2, ArrayView2, ArrayViewMut2};
-use pulp::NullaryFnOnce;
+use ndarray::{Array1, Array2, ArrayView2, ArrayViewMut2, s};
+use pulp::Arch;
 use rayon::prelude::*;
+use std::ops::Range;
+
+/// Lanes of a tile.
+const WIDE: usize = 16;
+/// Vectors handled together: their segments are the first to become lanes.
+const TOGETHER: usize = 8;
+/// Longest segments, on average: a tile then is about 100 KB of real numbers.
+const LONGEST: f64 = 1000.0;
+/// Pieces of the vector that are worked on by themselves, in any order,
+const BLOCKS: usize = 32;
+/// and how long they are at least: tiles need several segments of one class.
+const SMALLEST_BLOCK: usize = 8192;
 
 /// H of one kind of particles, split into low and high modes.
 #[derive(Debug, Clone)]
 pub struct SplitOperator<T> {
     classes: Vec<Class<T>>,
-    /// Couplings of a low mode (column) with a high mode (row).
-    density: Array2<f64>,
+    ladders: Vec<Ladder<T>>,
+    high: HighParts<T>,
     dimension: usize,
 }
 
-/// The configurations with a given number of low particles.
+/// The low parts with a given number of particles.
 #[derive(Debug, Clone)]
 struct Class<T> {
-    /// Where the segment of each high part starts.
-    segments: Vec<usize>,
     width: usize,
-    low: SparseMatrix<T>,
-    high: SparseMatrix<T>,
-    /// Particles in the low modes of each low part, and in the high modes of each high part.
-    low_occupations: Vec<Vec<(u32, f64)>>,
-    high_occupations: Vec<Vec<(u32, f64)>>,
-    crossings: Vec<Crossing<T>>,
+    low: LaneMatrix<T>,
+    low_diagonal: Array1<f64>,
+    /// Particles in the coupled modes: `(width, coupled modes)`.
+    occupations: Array2<f64>,
 }
 
-/// Hops that create or annihilate a particle in one high mode, seen from the resulting class.
-#[derive(Debug, Clone)]
-struct Crossing<T> {
-    /// Class hopped from.
-    from: usize,
-    /// For each high part: the one hopped from and the factor, if there is one.
-    high: Vec<Option<(u32, f64)>>,
-    /// What happens to the low parts: `(width of this class, width of the other)`.
-    low: SparseMatrix<T>,
+/// Half of the modes, or fewer where segments would be longer than a tile should be high,
+/// averaged over the elements of a vector.
+fn low_modes(space: &ModeSpace) -> Result<usize> {
+    for low in (2..=space.modes() / 2).rev() {
+        let halves = HalfSpaces::split_at(space, low)?;
+        let squares = (0..halves.classes()).map(|class| {
+            let (low, high) = halves.spaces(class);
+            (low.dimension() as f64).powi(2) * high.dimension() as f64
+        });
+        if squares.sum::<f64>() <= LONGEST * space.dimension() as f64 {
+            return Ok(low);
+        }
+    }
+    Ok(1)
 }
 
 impl<T: Scalar> SplitOperator<T> {
@@ -60,16 +78,20 @@ impl<T: Scalar> SplitOperator<T> {
     /// # Errors
     /// [`crate::error::Error::TooManyConfigurations`] beyond 64-bit indices.
     pub fn new(space: &ModeSpace, terms: &ModeTerms<T>) -> Result<Self> {
-        let halves = HalfSpaces::new(space)?;
+        let halves = HalfSpaces::split_at(space, low_modes(space)?)?;
+        let (low, all) = (halves.low_modes(), space.modes());
+        let coupled: Vec<usize> = (0..low)
+            .filter(|&q| (low..all).any(|p| terms.density()[[q, p]] != 0.0))
+            .collect();
         let classes = (0..halves.classes())
-            .map(|class| Class::new(&halves, terms, class))
+            .map(|class| Class::new(halves.spaces(class).0, terms, &coupled))
             .collect::<Result<Vec<_>>>()?;
-        let (low, modes) = (halves.low_modes(), space.modes());
-        let density =
-            Array2::from_shape_fn((modes - low, low), |(p, q)| terms.density()[[q, low + p]]);
+        let block = (space.dimension() / BLOCKS).max(SMALLEST_BLOCK);
+        let (high, ladders) = HighParts::new(&halves, terms, &coupled, block)?;
         Ok(SplitOperator {
             classes,
-            density,
+            ladders,
+            high,
             dimension: space.dimension(),
         })
     }
@@ -77,301 +99,293 @@ impl<T: Scalar> SplitOperator<T> {
     /// Diagonal matrix elements.
     pub fn diagonal(&self) -> Array1<f64> {
         let mut diagonal = Array1::zeros(self.dimension);
-        for class in &self.classes {
-            let (low, high) = (class.low.diagonal(), class.high.diagonal());
-            for (row, &start) in class.segments.iter().enumerate() {
-                let potential = self.potential(&class.high_occupations[row]);
-                for (a, occupied) in class.low_occupations.iter().enumerate() {
-                    let coupling: f64 = occupied
-                        .iter()
-                        .map(|&(q, n)| potential[q as usize] * n)
-                        .sum();
-                    diagonal[start + a] = low[a] + high[row] + coupling;
+        for block in &self.high.blocks {
+            for (class, parts) in &block.groups {
+                for part in parts.clone() {
+                    let (start, level) = (self.high.starts[part], self.high.levels[part]);
+                    let class = &self.classes[*class];
+                    let felt = class.occupations.dot(&self.high.potentials.row(part));
+                    let mut segment = diagonal.slice_mut(s![start..start + class.width]);
+                    segment.assign(&(&class.low_diagonal + level + felt));
                 }
             }
         }
         diagonal
     }
 
-    /// What a particle in each low mode feels from a high part.
-    fn potential(&self, high: &[(u32, f64)]) -> Vec<f64> {
-        let mut potential = vec![0.0; self.density.ncols()];
-        for &(p, n) in high {
-            for (total, v) in potential.iter_mut().zip(self.density.row(p as usize)) {
-                *total += n * v;
-            }
-        }
-        potential
-    }
-
     /// Overwrites row k of `out` with the product with row k of `block`.
     pub fn apply(&self, block: ArrayView2<'_, T>, mut out: ArrayViewMut2<'_, T>) {
-        for (vector, mut result) in block.rows().into_iter().zip(out.rows_mut()) {
-            if let (Some(vector), Some(result)) = (vector.to_slice(), result.as_slice_mut()) {
-                self.apply_one(vector, result);
-            }
+        let block = block.as_standard_layout();
+        let vectors: Vec<&[T]> = block
+            .rows()
+            .into_iter()
+            .filter_map(|row| row.to_slice())
+            .collect();
+        if out.is_standard_layout() {
+            let results = out
+                .rows_mut()
+                .into_iter()
+                .filter_map(|row| row.into_slice());
+            self.apply_rows(&vectors, results.collect());
+        } else {
+            let mut result = Array2::zeros(out.dim());
+            self.apply(block.view(), result.view_mut());
+            out.assign(&result);
         }
     }
 
-    fn apply_one(&self, vector: &[T], result: &mut [T]) {
-        let mut by_class = self.segments_of(result);
-        let tasks: Vec<Task<'_, '_, T>> = self
-            .classes
-            .iter()
-            .zip(&mut by_class)
-            .flat_map(|(class, segments)| {
-                let tile = tile_of(class.segments.len());
-                segments
-                    .chunks_mut(tile)
-                    .enumerate()
-                    .map(move |(k, rows)| Task {
-                        class,
-                        first: k * tile,
-                        rows,
-                    })
-            })
-            .collect();
+    fn apply_rows(&self, vectors: &[&[T]], results: Vec<&mut [T]>) {
+        let blocks = &self.high.blocks;
+        let mut pieces: Vec<Vec<&mut [T]>> = blocks.iter().map(|_| Vec::new()).collect();
+        for mut rest in results {
+            for (block, pieces) in blocks.iter().zip(&mut pieces) {
+                let (piece, tail) = rest.split_at_mut(block.elements.len());
+                pieces.push(piece);
+                rest = tail;
+            }
+        }
         let widest = self
             .classes
             .iter()
             .map(|class| class.width)
             .max()
             .unwrap_or(0);
-        let buffer = || vec![T::zero(); widest * WIDE];
-        tasks.into_par_iter().for_each_init(
-            || (buffer(), buffer()),
-            |(source, target), task| {
-                with_tile_width!(task.class.segments.len(), W => {
-                    self.run::<W>(task, vector, source.as_chunks_mut().0, target.as_chunks_mut().0);
-                });
-            },
-        );
-    }
-
-    /// The segments of a vector by class, in the order of the high parts.
-    fn segments_of<'a>(&self, vector: &'a mut [T]) -> Vec<Vec<&'a mut [T]>> {
-        let mut order: Vec<(usize, usize, usize)> = Vec::new();
-        for (k, class) in self.classes.iter().enumerate() {
-            order.extend(class.segments.iter().map(|&start| (start, k, class.width)));
-        }
-        order.sort_unstable();
-        let mut by_class: Vec<Vec<&'a mut [T]>> = self.classes.iter().map(|_| Vec::new()).collect();
-        let mut rest = vector;
-        for (_, class, width) in order {
-            let (segment, tail) = rest.split_at_mut(width);
-            by_class[class].push(segment);
-            rest = tail;
-        }
-        by_class
-    }
-
-    /// The rows of a tile: low part and couplings transposed, then the high part row by row.
-    fn run<const W: usize>(
-        &self,
-        task: Task<'_, '_, T>,
-        vector: &[T],
-        source: &mut [[T; W]],
-        target: &mut [[T; W]],
-    ) {
-        let range = task.first..task.first + task.rows.len();
-        let potentials = self.potentials::<W>(&task.class.high_occupations[range]);
-        pulp::Arch::new().dispatch(SplitTile {
-            operator: self,
-            task,
-            vector,
-            potentials,
-            source,
-            target,
+        let coupled = self.high.potentials.ncols();
+        let buffers = || Buffers {
+            zeros: vec![T::zero(); widest],
+            source: vec![T::zero(); widest * WIDE],
+            target: vec![T::zero(); widest * WIDE],
+            felt: vec![0.0; coupled * WIDE],
+        };
+        let tasks = blocks.par_iter().zip(pieces).with_max_len(1);
+        tasks.for_each_init(buffers, |buffers, (block, mut pieces)| {
+            let together = vectors.chunks(TOGETHER).zip(pieces.chunks_mut(TOGETHER));
+            for (vectors, results) in together {
+                self.apply_block(block, vectors, results, buffers);
+            }
         });
     }
 
-    /// What a particle in each low mode feels from the high parts of a tile.
-    fn potentials<const W: usize>(&self, high: &[Vec<(u32, f64)>]) -> Vec<[f64; W]> {
-        let mut potentials = vec![[0.0; W]; self.density.ncols()];
-        for (place, occupied) in high.iter().enumerate() {
-            for (total, v) in potentials.iter_mut().zip(self.potential(occupied)) {
-                total[place] = v;
+    fn apply_block(
+        &self,
+        block: &Block,
+        vectors: &[&[T]],
+        results: &mut [&mut [T]],
+        buffers: &mut Buffers<T>,
+    ) {
+        for (class, parts) in &block.groups {
+            let group = Group {
+                class: *class,
+                parts: parts.clone(),
+                first: block.elements.start,
+                vectors,
+            };
+            match parts.len() * vectors.len() {
+                1 => self.run::<1>(group, results, buffers),
+                2..=LANES => self.run::<LANES>(group, results, buffers),
+                _ => self.run::<WIDE>(group, results, buffers),
             }
         }
-        potentials
+    }
+
+    fn run<const W: usize>(
+        &self,
+        group: Group<'_, T>,
+        results: &mut [&mut [T]],
+        buffers: &mut Buffers<T>,
+    ) {
+        let lanes = group.parts.len() * group.vectors.len();
+        let mut product = GroupProduct::<T, W> {
+            operator: self,
+            arch: Arch::new(),
+            group,
+            results,
+            zeros: &buffers.zeros,
+            source: buffers.source.as_chunks_mut().0,
+            target: buffers.target.as_chunks_mut().0,
+            felt: &mut buffers.felt.as_chunks_mut().0[..self.high.potentials.ncols()],
+        };
+        for first in (0..lanes).step_by(W) {
+            product.tile(first, (lanes - first).min(W));
+        }
     }
 }
 
-/// Rows of one class that one task works out.
-struct Task<'a, 'b, T> {
-    class: &'a Class<T>,
-    first: usize,
-    rows: &'a mut [&'b mut [T]],
+/// Room for tiles.
+struct Buffers<T> {
+    zeros: Vec<T>,
+    source: Vec<T>,
+    target: Vec<T>,
+    felt: Vec<f64>,
 }
 
-/// The work of a task. (A struct, not a closure: only then it is compiled for the instruction set
-/// found at run time.)
-struct SplitTile<'a, 'b, T, const W: usize> {
+/// High parts of one class, neighbours in the vector, and the vectors to multiply.
+struct Group<'a, T> {
+    class: usize,
+    parts: Range<usize>,
+    /// Where the results start in the whole vectors.
+    first: usize,
+    vectors: &'a [&'a [T]],
+}
+
+/// The products of a group.
+struct GroupProduct<'a, 'b, T, const W: usize> {
     operator: &'a SplitOperator<T>,
-    task: Task<'a, 'b, T>,
-    vector: &'a [T],
-    potentials: Vec<[f64; W]>,
+    arch: Arch,
+    group: Group<'a, T>,
+    results: &'a mut [&'b mut [T]],
+    zeros: &'a [T],
     source: &'a mut [[T; W]],
     target: &'a mut [[T; W]],
+    felt: &'a mut [[f64; W]],
 }
 
-impl<T: Scalar, const W: usize> NullaryFnOnce for SplitTile<'_, '_, T, W> {
-    type Output = ();
-
-    #[inline(always)]
-    fn call(self) {
-        let (classes, vector) = (&self.operator.classes, self.vector);
-        let (class, first, rows) = (self.task.class, self.task.first, self.task.rows);
-        let range = first..first + rows.len();
-        let target = &mut self.target[..class.width];
-        let lanes = class.lanes(range.clone().map(|row| Some((row as u32, 1.0))), vector);
-        let own = &mut self.source[..class.width];
-        transpose_in(&lanes, own);
-        let potentials = &self.potentials;
-        multiply_tile(
-            Some(&class.low),
-            own,
-            target,
-            #[inline(always)]
-            |a, x| coupled(potentials, &class.low_occupations[a], x),
-        );
-        for crossing in &class.crossings {
-            let other = &classes[crossing.from];
-            let lanes = other.lanes(crossing.high[range.clone()].iter().copied(), vector);
-            if !lanes.is_empty() {
-                let source = &mut self.source[..other.width];
-                if lanes.len() < W {
-                    source.fill([T::zero(); W]);
-                }
-                transpose_in(&lanes, source);
-                add_tile_product(&crossing.low, source, target);
-            }
-        }
-        transpose_out(target, rows);
-        for (row, target) in range.zip(rows) {
-            class.add_high::<W>(row, vector, target);
-        }
-    }
-}
-
-fn tile_of(rows: usize) -> usize {
-    with_tile_width!(rows, W => W)
-}
-
-/// The density coupling of one low part with the high parts of a tile.
-#[inline(always)]
-fn coupled<T: Scalar, const W: usize>(
-    potentials: &[[f64; W]],
-    occupied: &[(u32, f64)],
-    x: &[T; W],
-) -> [T; W] {
-    let mut total = [0.0; W];
-    for &(q, n) in occupied {
-        let potential = &potentials[q as usize];
-        for k in 0..W {
-            total[k] += n * potential[k];
-        }
-    }
-    let mut result = [T::zero(); W];
-    for k in 0..W {
-        result[k] = x[k] * total[k];
-    }
-    result
-}
-
-impl<T: Scalar> Class<T> {
-    fn new(halves: &HalfSpaces, terms: &ModeTerms<T>, class: usize) -> Result<Self> {
-        let (low, high) = halves.spaces(class);
-        let (range_low, range_high) = halves.ranges();
-        Ok(Class {
-            segments: halves.segments(class)?,
-            width: low.dimension(),
-            low: on_space(low, terms.within(range_low)),
-            high: on_space(high, terms.within(range_high)),
-            low_occupations: low.occupied()?,
-            high_occupations: high.occupied()?,
-            crossings: crossings(halves, terms, class)?,
-        })
-    }
-
-    /// The segments of high parts, with factors, as vectors of a tile; the others are left out.
-    fn lanes<'a>(
-        &self,
-        rows: impl Iterator<Item = Option<(u32, f64)>>,
-        vector: &'a [T],
-    ) -> Vec<Lane<'a, T>> {
-        rows.enumerate()
-            .filter_map(|(place, row)| {
-                let (row, factor) = row?;
-                let start = self.segments[row as usize];
-                Some((place, factor, &vector[start..start + self.width]))
-            })
-            .collect()
-    }
-
-    /// Adds the hops and levels of the high modes to one row.
-    #[inline(always)]
-    fn add_high<const W: usize>(&self, row: usize, vector: &[T], target: &mut [T]) {
-        let (columns, values) = self.high.row(row);
-        for (chunk, target) in target.chunks_mut(W).enumerate() {
-            let mut sum = [T::zero(); W];
-            for (&from, &value) in columns.iter().zip(values) {
-                let start = self.segments[from as usize] + chunk * W;
-                let source = &vector[start..start + target.len()];
-                if let Ok(source) = <&[T; W]>::try_from(source) {
-                    for k in 0..W {
-                        sum[k] += value * source[k];
-                    }
-                } else {
-                    for (total, &x) in sum.iter_mut().zip(source) {
-                        *total += value * x;
-                    }
-                }
-            }
-            for (x, total) in target.iter_mut().zip(sum) {
-                *x += total;
-            }
-        }
-    }
-}
-
-fn on_space<T: Scalar>(space: &ModeSpace, terms: ModeTerms<T>) -> SparseMatrix<T> {
-    ModeOperator::new(space.clone(), terms)
-        .to_sparse()
-        .without_zeros()
-}
-
-/// Hops across that lead into a class.
-fn crossings<T: Scalar>(
-    halves: &HalfSpaces,
-    terms: &ModeTerms<T>,
-    class: usize,
-) -> Result<Vec<Crossing<T>>> {
-    let low_modes = halves.low_modes();
-    let (low, high) = halves.spaces(class);
-    let mut list = Vec::new();
-    for p in 0..high.modes() {
-        for creates_high in [true, false] {
-            let Some(from) = halves.neighbour(class, creates_high) else {
-                continue;
+impl<T: Scalar, const W: usize> GroupProduct<'_, '_, T, W> {
+    /// `count` lanes: what acts along the segments, then hops of the high particles.
+    fn tile(&mut self, first: usize, count: usize) {
+        let high = &self.operator.high;
+        let class = &self.operator.classes[self.group.class];
+        let width = class.width;
+        let vectors = self.group.vectors;
+        let mut lanes = [Lane {
+            source: &self.zeros[..width],
+            factor: 0.0,
+        }; W];
+        let mut places = [(0, 0); W];
+        let mut parts = [0; W];
+        let mut levels = [0.0; W];
+        for k in 0..count {
+            let v = (first + k) % vectors.len();
+            let part = self.group.parts.start + (first + k) / vectors.len();
+            let start = high.starts[part];
+            lanes[k] = Lane {
+                source: &vectors[v][start..start + width],
+                factor: 1.0,
             };
-            let (other_low, other_high) = halves.spaces(from);
-            // <b', a'| h a+_p a_q |b, a> with p high and q low, or its adjoint
-            let amplitude = |q: usize| {
-                let value = terms.hop_amplitude(low_modes + p, q);
-                if creates_high { value } else { value.conj() }
-            };
-            let passing = halves.passing_sign(class, creates_high);
-            let matrix = low.ladder_matrix(other_low, creates_high, |q| amplitude(q) * passing)?;
-            if matrix.values.is_empty() {
-                continue;
+            places[k] = (v, start - self.group.first);
+            parts[k] = part;
+            levels[k] = high.levels[part];
+            for (felt, &potential) in self.felt.iter_mut().zip(high.potentials.row(part)) {
+                felt[k] = potential;
             }
-            list.push(Crossing {
-                from,
-                high: high.ladder_row(other_high, p, creates_high)?,
-                low: matrix,
+        }
+        let (places, parts) = (&places[..count], &parts[..count]);
+        self.arch.dispatch(TransposeIn {
+            lanes: &lanes,
+            tile: &mut self.source[..width],
+        });
+        self.arch.dispatch(OwnProduct {
+            matrix: &class.low,
+            levels: &levels,
+            felt: self.felt,
+            occupations: class.occupations.as_slice().unwrap_or_default(),
+            source: &self.source[..width],
+            target: &mut self.target[..width],
+        });
+        self.add_crossings(width, parts, places);
+        self.arch.dispatch(TransposeOut {
+            tile: &self.target[..width],
+            places,
+            vectors: self.results,
+        });
+        self.arch.dispatch(AddRows {
+            rows: parts,
+            matrix: &high.hops,
+            starts: &high.starts,
+            width,
+            vectors,
+            places,
+            results: self.results,
+        });
+        self.add_shifts(width, parts, places);
+    }
+
+    /// Hops across that shift long pieces.
+    fn add_shifts(&mut self, width: usize, parts: &[usize], places: &[Place]) {
+        let high = &self.operator.high;
+        for (&part, &(v, start)) in parts.iter().zip(places) {
+            for crossing in high.shifts.of_part(part) {
+                let ladder = &self.operator.ladders[crossing.ladder as usize];
+                let from = high.starts[crossing.from as usize];
+                let source = &self.group.vectors[v][from..from + ladder.width];
+                self.arch.dispatch(AddRuns {
+                    runs: &ladder.runs,
+                    lane: Lane {
+                        source,
+                        factor: crossing.factor,
+                    },
+                    target: &mut self.results[v][start..start + width],
+                });
+            }
+        }
+    }
+
+    /// Hops across, ladder by ladder for all lanes that it leads to.
+    fn add_crossings(&mut self, width: usize, parts: &[usize], places: &[Place]) {
+        let high = &self.operator.high;
+        let mut cursors: [&[Crossing]; W] = [&[]; W];
+        let mut next = [u32::MAX; W];
+        for ((cursor, next), &part) in cursors.iter_mut().zip(&mut next).zip(parts) {
+            *cursor = high.crossings.of_part(part);
+            *next = cursor.first().map_or(u32::MAX, |crossing| crossing.ladder);
+        }
+        loop {
+            let mut number = u32::MAX;
+            for &ladder in &next {
+                number = number.min(ladder);
+            }
+            if number == u32::MAX {
+                break;
+            }
+            let ladder = &self.operator.ladders[number as usize];
+            let mut lanes = [Lane {
+                source: &self.zeros[..ladder.width],
+                factor: 0.0,
+            }; W];
+            for (k, &(v, _)) in places.iter().enumerate() {
+                if next[k] == number {
+                    let crossing = cursors[k][0];
+                    let start = high.starts[crossing.from as usize];
+                    lanes[k] = Lane {
+                        source: &self.group.vectors[v][start..start + ladder.width],
+                        factor: crossing.factor,
+                    };
+                    cursors[k] = &cursors[k][1..];
+                    next[k] = cursors[k]
+                        .first()
+                        .map_or(u32::MAX, |crossing| crossing.ladder);
+                }
+            }
+            let source = &mut self.source[..ladder.width];
+            self.arch.dispatch(TransposeIn {
+                lanes: &lanes,
+                tile: source,
+            });
+            self.arch.dispatch(AddProduct {
+                matrix: &ladder.low,
+                source,
+                target: &mut self.target[..width],
             });
         }
     }
-    Ok(list)
+}
+
+impl<T: Scalar> Class<T> {
+    fn new(space: &ModeSpace, terms: &ModeTerms<T>, coupled: &[usize]) -> Result<Self> {
+        let low = on_space(space, terms.within(0..space.modes()));
+        let mut occupations = Array2::zeros((space.dimension(), coupled.len()));
+        for (occupied, mut row) in space.occupied()?.iter().zip(occupations.rows_mut()) {
+            for &(q, n) in occupied {
+                if let Some(number) = coupled.iter().position(|&mode| mode == q as usize) {
+                    row[number] = n;
+                }
+            }
+        }
+        Ok(Class {
+            width: space.dimension(),
+            low_diagonal: low.diagonal(),
+            low: LaneMatrix::new(&low),
+            occupations,
+        })
+    }
 }

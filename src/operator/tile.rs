@@ -52,32 +52,3 @@ pub fn with_row_product<T: Scalar, const W: usize>(
     }
     sum
 }
-
-/// target\[i\] = start(i, source\[i\]) + sum_j matrix\[i, j\] source\[j\]
-#[inline(always)]
-pub fn multiply_tile<T: Scalar, const W: usize>(
-    matrix: Option<&SparseMatrix<T>>,
-    source: &[[T; W]],
-    target: &mut [[T; W]],
-    start: impl Fn(usize, &[T; W]) -> [T; W],
-) {
-    for (i, target) in target.iter_mut().enumerate() {
-        let sum = start(i, &source[i]);
-        *target = match matrix {
-            Some(matrix) => with_row_product(sum, matrix, i, source),
-            None => sum,
-        };
-    }
-}
-
-/// target += matrix source
-#[inline(always)]
-pub fn add_tile_product<T: Scalar, const W: usize>(
-    matrix: &SparseMatrix<T>,
-    source: &[[T; W]],
-    target: &mut [[T; W]],
-) {
-    for (i, target) in target.iter_mut().enumerate() {
-        *target = with_row_product(*target, matrix, i, source);
-    }
-}
