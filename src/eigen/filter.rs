@@ -8,6 +8,7 @@
 
 use crate::error::{Error, Result};
 use crate::linear_operator::{LinearOperator, Recurrence, Subtrahend};
+use crate::memory;
 use crate::scalar::Scalar;
 use ndarray::{ArrayView2, ArrayViewMut2, Axis};
 use std::ops::ControlFlow;
@@ -98,7 +99,11 @@ impl<T: Scalar> Filter<T> {
     ) -> Result<()> {
         let mut products = 0;
         let n = block.ncols();
-        self.even.resize(n, T::zero());
+        if self.even.is_empty() {
+            self.even.reserve_exact(n);
+            memory::prefer_large_pages(&mut self.even);
+            self.even.resize(n, T::zero());
+        }
         let mut even = ArrayViewMut2::from_shape((1, n), &mut self.even).expect("one row");
         let (lower, upper) = self.interval;
         let factor = 2.0 / (upper - lower);

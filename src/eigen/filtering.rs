@@ -7,6 +7,8 @@ use crate::scalar::Scalar;
 
 /// Steps that must be affordable for a filter to be worth while.
 const FEWEST_FILTERED_STEPS: usize = 8;
+/// Steps after which Ritz values may say which filter to begin with, beside two for each level.
+const STEPS_FOR_A_FILTER: usize = 6;
 /// Rows that a filter takes in memory, with one for operators that need it.
 const FILTER_ROWS: usize = 2;
 /// Least ratio of degrees for which another filter is worth beginning anew.
@@ -16,7 +18,7 @@ const RISE: usize = 3;
 const SEPARATION: f64 = 10.0;
 
 impl<T: Scalar> Search<'_, '_, T> {
-    /// Begins to filter when the Ritz values of a full basis say how, filters more strongly when
+    /// Begins to filter when the Ritz values after some steps say how, filters more strongly when
     /// they have become good enough to say how, and stops when the levels wanted are not below
     /// the filtered interval; whether there was anything to change.
     pub fn change_filter(&mut self, wanted: usize, full: bool) -> bool {
@@ -26,11 +28,11 @@ impl<T: Scalar> Search<'_, '_, T> {
             self.run.change_filter(None, in_space);
             return true;
         }
-        if !(if degree > 0 {
-            self.separated(in_space)
-        } else {
-            full
-        }) {
+        let ready = match degree {
+            0 => full || self.run.fresh() && self.run.size >= STEPS_FOR_A_FILTER + 2 * wanted,
+            _ => self.separated(in_space),
+        };
+        if !ready {
             return false;
         }
         let better = |filter: &Filter<T>| filter.degree() >= RISE * degree;
@@ -46,16 +48,21 @@ impl<T: Scalar> Search<'_, '_, T> {
     }
 
     /// Whether the lowest `wanted` Ritz values and the two beyond are known well enough to place
-    /// the end of an interval between them.
+    /// the end of an interval between them, and not so well that beginning anew would cost more
+    /// than going on.
     fn separated(&self, wanted: usize) -> bool {
         let (values, residuals) = (&self.run.ritz.values, &self.run.ritz.residuals);
         if !self.run.fresh() || values.len() < wanted + 2 {
             return false;
         }
+        let tolerance = self.goal.residual_tolerance(&self.levels(), self.run.scale);
+        let halfway = (tolerance * self.run.scale).sqrt();
+        let asked_for = self.goal.levels.saturating_sub(self.locked.len());
         let distance = values[wanted + 1] - values[wanted - 1];
-        residuals[..=wanted + 1]
-            .iter()
-            .all(|&r| r < SEPARATION * distance)
+        residuals[asked_for.clamp(1, wanted) - 1] > halfway
+            && residuals[..=wanted + 1]
+                .iter()
+                .all(|&r| r < SEPARATION * distance)
     }
 
     /// The filter that the Ritz values suggest for the lowest `wanted` levels, if it is of use.

@@ -6,9 +6,11 @@
 
 use super::filter::Filter;
 use super::orthogonal::{Purge, fill_random, orthonormalize, rotate};
+use super::ritz::Ritz;
 use crate::dense::eigh;
 use crate::error::{Error, Result};
 use crate::linear_operator::LinearOperator;
+use crate::memory;
 use crate::progress::{Monitor, Progress};
 use crate::scalar::Scalar;
 use ndarray::{Array2, ArrayView2, ArrayViewMut2, Axis, s};
@@ -20,46 +22,6 @@ use std::ops::Range;
 const RANDOM_PART: f64 = 0.01;
 /// Ritz pairs lag behind by at most the size of the basis over this.
 const RITZ_INTERVAL: usize = 16;
-
-/// Ritz pairs of the basis as it stands: levels, coefficients in columns, residual norms.
-#[derive(Clone)]
-pub(super) struct Ritz<T> {
-    /// Eigenvalues of the projected matrix.
-    images: Vec<f64>,
-    /// The levels that belong to them; through a filter, only those below its interval.
-    pub values: Vec<f64>,
-    pub coefficients: Array2<T>,
-    pub residuals: Vec<f64>,
-}
-
-impl<T: Scalar> Ritz<T> {
-    fn empty() -> Self {
-        Ritz {
-            images: Vec::new(),
-            values: Vec::new(),
-            coefficients: Array2::zeros((0, 0)),
-            residuals: Vec::new(),
-        }
-    }
-
-    /// The normalised sum of the `keep` lowest Ritz vectors as the only row: its energy, and a
-    /// bound on its residual norm. Nothing if not all of their levels are known.
-    fn mean(&self, keep: usize) -> Self {
-        let (Some(values), Some(residuals)) = (self.values.get(..keep), self.residuals.get(..keep))
-        else {
-            return Ritz::empty();
-        };
-        let energy = values.iter().sum::<f64>() / keep as f64;
-        let variance = values.iter().map(|v| (v - energy).powi(2)).sum::<f64>() / keep as f64;
-        let square: f64 = residuals.iter().map(|r| r * r).sum();
-        Ritz {
-            images: vec![energy],
-            values: vec![energy],
-            coefficients: Array2::eye(1),
-            residuals: vec![variance.sqrt() + square.sqrt()],
-        }
-    }
-}
 
 /// The basis and its projected problem. Rows in memory: locked, Krylov, residual block.
 pub(super) struct BlockLanczos<'a, T: Scalar> {
@@ -117,6 +79,7 @@ impl<'a, T: Scalar> BlockLanczos<'a, T> {
                 required: length as u128 * size_of::<T>() as u128,
                 available: 0,
             })?;
+        memory::prefer_large_pages(&mut storage);
         Ok(BlockLanczos {
             operator,
             filter: None,
@@ -169,6 +132,7 @@ impl<'a, T: Scalar> BlockLanczos<'a, T> {
         let (n, total) = (self.dimension, rows + extra);
         if self.storage.len() < total * n {
             self.storage.reserve_exact(total * n - self.storage.len());
+            memory::prefer_large_pages(&mut self.storage);
             self.storage.resize(total * n, T::zero());
         }
         let (head, tail) = self.storage.split_at_mut(rows * n);
@@ -221,12 +185,9 @@ impl<'a, T: Scalar> BlockLanczos<'a, T> {
         let (rows, active, locked) = (self.rows(), self.active, self.locked);
         self.multiply(rows - active..rows, rows, monitor)?;
         let purge = Purge {
-            first_expected: if locked > 0 { 0 } else { self.first_coupled },
+            first_expected: locked + self.first_coupled,
             noise: 16.0 * f64::EPSILON * self.norm(),
-            overlap: match self.filter {
-                Some(_) => 0.0,
-                None => 0.05 * self.accuracy / self.scale.max(self.accuracy),
-            },
+            overlap: 0.05 * self.accuracy / self.norm().max(self.accuracy),
         };
         let mut generator = self.generator.clone();
         let (basis, image) = self.split(rows, active);

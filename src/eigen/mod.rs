@@ -12,8 +12,10 @@ mod lanczos;
 mod multiplet;
 mod orthogonal;
 mod probe;
+mod ritz;
 mod search;
 mod single;
+mod whitening;
 
 use crate::error::{Error, Result};
 use crate::linear_operator::LinearOperator;

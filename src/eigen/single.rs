@@ -4,10 +4,9 @@ use crate::scalar::Scalar;
 use ndarray::{Array2, ArrayView2, ArrayViewMut2};
 use pulp::NullaryFnOnce;
 
-/// Numbers handled side by side: a few registers.
-const LANES: usize = 16;
-/// Rows handled together: one pass over the vector serves them all.
-const GROUP: usize = 4;
+/// Numbers handled side by side: a few registers. (One row after the other: the vector is in
+/// cache, and of several rows together the compiler makes gathers.)
+const LANES: usize = 32;
 
 /// The overlaps <v_i, w> with a single row w, as a column; none if rows are not contiguous.
 pub(super) fn overlaps<T: Scalar>(
@@ -68,36 +67,25 @@ impl<T: Scalar> NullaryFnOnce for Overlaps<'_, T> {
     #[inline(always)]
     fn call(self) -> Vec<T> {
         let mut overlaps = Vec::with_capacity(self.rows.len());
-        let (groups, rest) = self.rows.as_chunks::<GROUP>();
-        for &group in groups {
-            overlaps.extend(dot_products(group, self.vector));
-        }
-        for &row in rest {
-            overlaps.extend(dot_products([row], self.vector));
+        for row in self.rows {
+            overlaps.push(dot_product(row, self.vector));
         }
         overlaps
     }
 }
 
 #[inline(always)]
-fn dot_products<T: Scalar, const N: usize>(rows: [&[T]; N], vector: &[T]) -> [T; N] {
+fn dot_product<T: Scalar>(row: &[T], vector: &[T]) -> T {
     let (chunks, rest) = vector.as_chunks::<LANES>();
-    let parts = rows.map(|row| row[..vector.len()].as_chunks::<LANES>());
-    let mut sums = [[T::zero(); LANES]; N];
-    for (c, w) in chunks.iter().enumerate() {
-        for k in 0..N {
-            let v = &parts[k].0[c];
-            for j in 0..LANES {
-                sums[k][j] = sums[k][j].plus_product(v[j].conj(), w[j]);
-            }
+    let (parts, tail) = row[..vector.len()].as_chunks::<LANES>();
+    let mut sums = [T::zero(); LANES];
+    for (v, w) in parts.iter().zip(chunks) {
+        for j in 0..LANES {
+            sums[j] = sums[j].plus_product(v[j].conj(), w[j]);
         }
     }
-    let mut totals = [T::zero(); N];
-    for k in 0..N {
-        let tail = parts[k].1.iter().zip(rest).map(|(v, &w)| v.conj() * w);
-        totals[k] = sums[k].into_iter().sum::<T>() + tail.sum::<T>();
-    }
-    totals
+    let tail = tail.iter().zip(rest).map(|(v, &w)| v.conj() * w);
+    sums.into_iter().sum::<T>() + tail.sum::<T>()
 }
 
 struct AddCombination<'a, T> {
@@ -111,36 +99,23 @@ impl<T: Scalar> NullaryFnOnce for AddCombination<'_, T> {
 
     #[inline(always)]
     fn call(self) {
-        let (groups, rest) = self.rows.as_chunks::<GROUP>();
-        let (factors, last) = self.coefficients.as_chunks::<GROUP>();
-        for (&group, &factors) in groups.iter().zip(factors) {
-            add_scaled(factors, group, self.vector);
-        }
-        for (&row, &factor) in rest.iter().zip(last) {
-            add_scaled([factor], [row], self.vector);
+        for (&factor, row) in self.coefficients.iter().zip(self.rows) {
+            add_scaled(factor, row, self.vector);
         }
     }
 }
 
 #[inline(always)]
-fn add_scaled<T: Scalar, const N: usize>(factors: [T; N], rows: [&[T]; N], vector: &mut [T]) {
-    let length = vector.len();
-    let parts = rows.map(|row| row[..length].as_chunks::<LANES>());
+fn add_scaled<T: Scalar>(factor: T, row: &[T], vector: &mut [T]) {
+    let (parts, tail) = row[..vector.len()].as_chunks::<LANES>();
     let (chunks, rest) = vector.as_chunks_mut::<LANES>();
-    for (c, chunk) in chunks.iter_mut().enumerate() {
-        let mut sum = *chunk;
-        for k in 0..N {
-            let v = &parts[k].0[c];
-            for j in 0..LANES {
-                sum[j] = sum[j].plus_product(factors[k], v[j]);
-            }
+    for (w, v) in chunks.iter_mut().zip(parts) {
+        for j in 0..LANES {
+            w[j] = w[j].plus_product(factor, v[j]);
         }
-        *chunk = sum;
     }
-    for (j, x) in rest.iter_mut().enumerate() {
-        for k in 0..N {
-            *x += factors[k] * parts[k].1[j];
-        }
+    for (w, &v) in rest.iter_mut().zip(tail) {
+        *w += factor * v;
     }
 }
 

@@ -9,7 +9,7 @@ use super::density_coupling::DensityCoupling;
 use super::modes::ModeOperator;
 use super::stored::SparseMatrix;
 use super::tile::with_row_product;
-use super::transpose::{LINE, Lane, Subtracted, transpose_in, transpose_line_out};
+use super::transpose::{LINE, Subtracted, transpose_in, transpose_line_out};
 use crate::error::Result;
 use crate::memory;
 use crate::scalar::Scalar;
@@ -69,11 +69,7 @@ impl<T: Scalar> StringMatrix<T> {
         let tiles = result.par_chunks_mut(W * width).enumerate();
         let tiles = tiles.zip(vector.par_chunks(W * width));
         tiles.for_each(|((tile, result), vector)| {
-            let lanes: Vec<Lane<'_, T>> = vector
-                .chunks(width)
-                .enumerate()
-                .map(|(k, row)| (k, 1.0, row))
-                .collect();
+            let vectors: Vec<&[T]> = vector.chunks(width).collect();
             let others: Vec<&[T]> = match subtrahend {
                 RowSubtrahend::Vector(other) => {
                     other[tile * W * width..].chunks(width).take(W).collect()
@@ -84,10 +80,10 @@ impl<T: Scalar> StringMatrix<T> {
             buffers.with(W * width, |source| {
                 arch.dispatch(RowTile::<T, W> {
                     matrix: self.dense.is_none().then_some(&self.sparse),
-                    coupling: coupling.map(|c| (c, c.potentials(tile * W, lanes.len()))),
+                    coupling: coupling.map(|c| (c, c.potentials(tile * W, vectors.len()))),
                     constant: diagonal.constant,
                     factor: diagonal.factor,
-                    lanes,
+                    vectors,
                     rows: result.chunks_mut(width).collect(),
                     subtracted: match subtrahend {
                         RowSubtrahend::Nothing => Subtracted::Nothing,
@@ -150,7 +146,7 @@ struct RowTile<'a, T, const W: usize> {
     coupling: Option<(&'a DensityCoupling, Vec<[f64; W]>)>,
     constant: f64,
     factor: f64,
-    lanes: Vec<Lane<'a, T>>,
+    vectors: Vec<&'a [T]>,
     rows: Vec<&'a mut [T]>,
     subtracted: Subtracted<'a, T>,
     source: &'a mut [[T; W]],
@@ -161,7 +157,7 @@ impl<T: Scalar, const W: usize> NullaryFnOnce for RowTile<'_, T, W> {
 
     #[inline(always)]
     fn call(mut self) {
-        transpose_in(&self.lanes, self.source);
+        transpose_in(&self.vectors, self.source);
         let source = &*self.source;
         let mut line = [[T::zero(); W]; LINE];
         for start in (0..source.len()).step_by(LINE) {

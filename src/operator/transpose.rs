@@ -5,32 +5,21 @@ use crate::scalar::Scalar;
 /// Columns that are transposed together: a cache line of each row.
 pub const LINE: usize = 8;
 
-/// A vector of a tile: its place, a factor, and its components.
-pub type Lane<'a, T> = (usize, f64, &'a [T]);
-
-/// tile\[c\]\[place\] = factor x vector\[c\] for each lane; other places stay as they are.
+/// tile\[c\]\[k\] = vectors\[k\]\[c\]; places without a vector stay as they are.
 #[inline(always)]
-pub fn transpose_in<T: Scalar, const W: usize>(lanes: &[Lane<'_, T>], tile: &mut [[T; W]]) {
-    let first = lanes.first().map_or(0, |lane| lane.0);
-    let neighbours = lanes
-        .iter()
-        .zip(first..)
-        .all(|(lane, place)| lane.0 == place);
+pub fn transpose_in<T: Scalar, const W: usize>(vectors: &[&[T]], tile: &mut [[T; W]]) {
     for (block, line) in tile.chunks_mut(LINE).enumerate() {
-        for group in lanes.chunks(SIDE) {
-            if !(neighbours && registers::transpose_in(group, block * LINE, line)) {
-                fill_lanes(group, block * LINE, line);
+        let start = block * LINE;
+        for (group, vectors) in vectors.chunks(SIDE).enumerate() {
+            let first = group * SIDE;
+            if registers::transpose_in(vectors, (first, start), line) {
+                continue;
             }
-        }
-    }
-}
-
-#[inline(always)]
-fn fill_lanes<T: Scalar, const W: usize>(lanes: &[Lane<'_, T>], start: usize, line: &mut [[T; W]]) {
-    for &(place, factor, vector) in lanes {
-        let vector = &vector[start..start + line.len()];
-        for (components, &x) in line.iter_mut().zip(vector) {
-            components[place] = x * factor;
+            for (vector, place) in vectors.iter().zip(first..) {
+                for (components, &x) in line.iter_mut().zip(&vector[start..]) {
+                    components[place] = x;
+                }
+            }
         }
     }
 }
@@ -43,14 +32,6 @@ pub enum Subtracted<'a, T> {
     Overwritten,
     /// A vector for each of those written.
     Vectors(&'a [&'a [T]]),
-}
-
-/// vectors\[place\]\[c\] = tile\[c\]\[place\]
-#[inline(always)]
-pub fn transpose_out<T: Scalar, const W: usize>(tile: &[[T; W]], vectors: &mut [&mut [T]]) {
-    for (block, line) in tile.chunks(LINE).enumerate() {
-        transpose_line_out(line, vectors, Subtracted::Nothing, block * LINE);
-    }
 }
 
 /// vectors\[place\]\[start + c\] = line\[c\]\[place\] - what is subtracted, at most [`LINE`] columns
@@ -85,7 +66,7 @@ const SIDE: usize = 4;
 /// Transposition of real numbers in registers; the compiler does not find it by itself.
 #[cfg(target_arch = "x86_64")]
 mod registers {
-    use super::{LINE, Lane, SIDE, Subtracted};
+    use super::{LINE, SIDE, Subtracted};
     use crate::scalar::Scalar;
     use pulp::x86::V3;
     use std::arch::x86_64::__m256d;
@@ -106,23 +87,22 @@ mod registers {
         ]
     }
 
-    /// Fills neighbouring places of a whole line, or returns false.
+    /// Fills the places from `first` on of a whole line from four vectors, or returns false.
     #[inline(always)]
     pub fn transpose_in<T: Scalar, const W: usize>(
-        lanes: &[Lane<'_, T>],
-        start: usize,
+        vectors: &[&[T]],
+        (first, start): (usize, usize),
         line: &mut [[T; W]],
     ) -> bool {
-        let (Some(simd), [a, b, c, d]) = (V3::try_new(), lanes) else {
+        let (Some(simd), [a, b, c, d]) = (V3::try_new(), vectors) else {
             return false;
         };
-        let first = a.0;
-        let (Some(line), Some(va), Some(vb), Some(vc), Some(vd)) = (
+        let (Some(line), Some(a), Some(b), Some(c), Some(d)) = (
             T::as_reals_mut(line.as_flattened_mut()),
-            real_part(a.2, start),
-            real_part(b.2, start),
-            real_part(c.2, start),
-            real_part(d.2, start),
+            real_part(a, start),
+            real_part(b, start),
+            real_part(c, start),
+            real_part(d, start),
         ) else {
             return false;
         };
@@ -133,15 +113,8 @@ mod registers {
             return false;
         }
         for half in 0..LINE / SIDE {
-            let row = |numbers: &[f64; LINE], factor: f64| {
-                let numbers = pulp::cast(numbers.as_chunks::<SIDE>().0[half]);
-                simd.avx
-                    ._mm256_mul_pd(numbers, simd.avx._mm256_set1_pd(factor))
-            };
-            let columns = transposed(
-                simd,
-                [row(va, a.1), row(vb, b.1), row(vc, c.1), row(vd, d.1)],
-            );
+            let row = |numbers: &[f64; LINE]| pulp::cast(numbers.as_chunks::<SIDE>().0[half]);
+            let columns = transposed(simd, [row(a), row(b), row(c), row(d)]);
             for k in 0..SIDE {
                 let components = &mut line[half * SIDE + k];
                 if let Some(places) = components[first..].first_chunk_mut::<SIDE>() {
@@ -218,9 +191,13 @@ mod registers {
 /// No registers of four numbers are known here.
 #[cfg(not(target_arch = "x86_64"))]
 mod registers {
-    use super::{Lane, Subtracted};
+    use super::Subtracted;
 
-    pub fn transpose_in<T, const W: usize>(_: &[Lane<'_, T>], _: usize, _: &mut [[T; W]]) -> bool {
+    pub fn transpose_in<T, const W: usize>(
+        _: &[&[T]],
+        _: (usize, usize),
+        _: &mut [[T; W]],
+    ) -> bool {
         false
     }
 
@@ -243,22 +220,27 @@ mod tests {
 
     fn back_and_forth<T: Scalar>(height: usize, length: usize, number: impl Fn(usize) -> T) {
         let numbers: Vec<T> = (0..height * length).map(number).collect();
-        let lanes: Vec<Lane<'_, T>> = numbers
-            .chunks(length)
-            .enumerate()
-            .map(|(place, row)| (place, 2.0, row))
-            .collect();
+        let vectors: Vec<&[T]> = numbers.chunks(length).collect();
         let mut tile = vec![[T::zero(); WIDTH]; length];
-        transpose_in(&lanes, &mut tile);
-        for (k, row) in numbers.chunks(length).enumerate() {
-            for (c, &x) in row.iter().enumerate() {
-                assert_eq!(tile[c][k], x * 2.0);
+        transpose_in(&vectors, &mut tile);
+        for (k, vector) in vectors.iter().enumerate() {
+            for (c, &x) in vector.iter().enumerate() {
+                assert_eq!(tile[c][k], x);
             }
         }
-        let mut back = vec![T::zero(); numbers.len()];
-        let mut vectors: Vec<&mut [T]> = back.chunks_mut(length).collect();
-        transpose_out(&tile, &mut vectors);
-        assert!(back.iter().zip(&numbers).all(|(&a, &b)| a == b * 2.0));
+        let out = |subtracted: Subtracted<'_, T>| {
+            let mut back = vec![T::one(); numbers.len()];
+            let mut rows: Vec<&mut [T]> = back.chunks_mut(length).collect();
+            for (block, line) in tile.chunks(LINE).enumerate() {
+                transpose_line_out(line, &mut rows, subtracted, block * LINE);
+            }
+            back
+        };
+        assert_eq!(out(Subtracted::Nothing), numbers);
+        let less_one: Vec<T> = numbers.iter().map(|&x| x - T::one()).collect();
+        assert_eq!(out(Subtracted::Overwritten), less_one);
+        let zeros = vec![T::zero(); numbers.len()];
+        assert_eq!(out(Subtracted::Vectors(&vectors)), zeros);
     }
 
     #[test]
@@ -269,15 +251,5 @@ mod tests {
                 back_and_forth(height, length, |i| Complex64::new(i as f64, -1.0));
             }
         }
-    }
-
-    #[test]
-    fn places_that_are_no_neighbours() {
-        let (a, b) = ([1.0, 2.0, 3.0], [4.0, 5.0, 6.0]);
-        let mut tile = [[0.0; 8]; 3];
-        let lanes: [Lane<'_, f64>; 4] = [(6, 1.0, &a), (1, -1.0, &b), (3, 2.0, &a), (2, 1.0, &b)];
-        transpose_in(&lanes, &mut tile);
-        assert_eq!(tile[0], [0.0, -4.0, 4.0, 2.0, 0.0, 0.0, 1.0, 0.0]);
-        assert_eq!(tile[2], [0.0, -6.0, 6.0, 6.0, 0.0, 0.0, 3.0, 0.0]);
     }
 }
