@@ -173,6 +173,7 @@ class ExclusionPolytope:
         density_matrix: npt.ArrayLike | None = None,
         *,
         occupations: npt.ArrayLike | None = None,
+        start: Projection | None = None,
     ) -> Projection:
         r"""Find the nearest allowed density matrix (Frobenius norm) or occupations.
 
@@ -190,6 +191,10 @@ class ExclusionPolytope:
         ----------
         density_matrix, occupations
             As for `contains`.
+        start : Projection, optional
+            An earlier result on the same polytope, of one point or of as many as now. Along a
+            sweep of near points it saves calls of the oracle (with the list it has no use); it
+            changes the answer within its certificate only.
 
         Returns
         -------
@@ -198,15 +203,18 @@ class ExclusionPolytope:
         Raises
         ------
         ArgumentError
-            For a wrong shape, NaN, infinity, or a matrix that is not Hermitian.
+            For a wrong shape, NaN, infinity, a matrix that is not Hermitian, or a start on
+            another polytope or of another number of points.
         ConvergenceError
             If the distance is not certified to 1e-9 or the point to 5e-6 (`result` is the
             partial result). Usually both reach rounding level; the `gap` of the result says
             how far they are certified, which for r = 100000 is about 2e-7 for the point.
         """
         values, lead, orbitals = self._points(density_matrix, occupations)
+        if start is not None and not isinstance(start, Projection):
+            raise ArgumentTypeError("start", type(start).__name__, "a Projection")
         with _refusing(orbitals):
-            core = self._core.project(values)
+            core = self._core.project(values, *(start._as_start() if start is not None else ()))
         result = Projection(self, core, lead, orbitals)
         bracket = core.distance - core.distance_lower
         loose = (core.gap > ACCEPTED_GAP) | (bracket > ACCEPTED_BRACKET)

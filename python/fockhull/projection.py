@@ -119,6 +119,12 @@ class Projection(Frozen):
         core = Projected.copy(self._core, members)
         return type(self), (self._polytope, core, self._lead, self._orbitals)
 
+    def _as_start(self) -> tuple[_core.Projections, int | None] | tuple[()]:
+        """Return the core's result and the member to start from; nothing if it was pickled."""
+        if isinstance(self._core, Projected):
+            return ()
+        return self._core, None if self._lead else self._member
+
     def _shaped(self, array: RealArray) -> RealArray:
         rows = array if self._lead else array[self._member]
         return read_only(rows.reshape(self._lead + self._polytope.shape))

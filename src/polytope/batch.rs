@@ -47,7 +47,7 @@ pub struct Projections {
     pub converged: Array1<bool>,
     oracle: Oracle,
     /// What the oracle's method found, by members.
-    searched: Vec<(usize, Projection)>,
+    pub(super) searched: Vec<(usize, Projection)>,
 }
 
 impl Projections {
@@ -93,7 +93,7 @@ impl Projections {
         let occupations = self.occupations.index_axis(Axis(0), member);
         let point = &occupations - &self.normals.index_axis(Axis(0), member);
         let options = ProjectionOptions::default();
-        Ok(projection::project(&self.oracle, point.view(), &options)?.ensemble())
+        Ok(projection::project(&self.oracle, point.view(), &options, None)?.ensemble())
     }
 
     /// Number of members that the oracle's method projected.
@@ -114,6 +114,25 @@ impl Projections {
     }
 }
 
+/// Earlier projections to start from.
+#[derive(Debug, Clone, Copy)]
+pub struct Start<'a> {
+    /// The result they belong to.
+    pub earlier: &'a Projections,
+    /// The member that all points start from; without it, each from that of its own number.
+    pub member: Option<usize>,
+}
+
+impl<'a> Start<'a> {
+    /// What the oracle's method found; nothing if the list was used.
+    fn found_for(self, member: usize) -> Option<&'a Projection> {
+        let member = self.member.unwrap_or(member);
+        let searched = &self.earlier.searched;
+        let place = searched.binary_search_by_key(&member, |found| found.0);
+        place.ok().map(|k| &searched[k].1)
+    }
+}
+
 impl ExclusionPolytope {
     /// The facet inequalities, complete, as [`LineUps::inequalities`](super::LineUps::inequalities);
     /// they are kept.
@@ -130,19 +149,32 @@ impl ExclusionPolytope {
     /// an earlier batch, or if it takes no more line-ups than there are points (for at most 12
     /// weights); otherwise the oracle. Both agree within their certificates.
     ///
+    /// An earlier result saves the oracle calls where points are near; it changes what is found
+    /// only within the certificates.
+    ///
     /// # Errors
-    /// As for [`ExclusionPolytope::project`], and [`Error::Interrupted`].
+    /// As for [`ExclusionPolytope::project`], [`Error::Argument`] for an earlier result on another
+    /// polytope or of another number of points, and [`Error::Interrupted`].
     pub fn project_batch(
         &self,
         points: ArrayView3<'_, f64>,
         options: &ProjectionOptions,
+        start: Option<Start<'_>>,
         monitor: &mut Monitor<'_>,
     ) -> Result<Projections> {
         options.check()?;
         let count = points.len_of(Axis(0));
+        if let Some(start) = start {
+            self.check_start(start, count)?;
+        }
+        let project = |member: usize, point: ArrayView2<'_, f64>| {
+            let start = start.and_then(|start| start.found_for(member));
+            self.check_occupations(point)?;
+            projection::project(&self.oracle, point, options, start)
+        };
         let mut result = Projections::new(&self.oracle, count);
         let Some(listed) = self.listed_for(count, monitor)? else {
-            let found = for_batch(points, monitor, |n| self.project(n, options))?;
+            let found = for_batch(points, monitor, |k, n| project(k, n))?;
             let members = found.into_iter().enumerate();
             members.for_each(|(member, found)| result.take(member, found));
             return Ok(result);
@@ -152,7 +184,7 @@ impl ExclusionPolytope {
         let left: Vec<usize> = converged.filter(|(_, c)| !**c).map(|(m, _)| m).collect();
         if !left.is_empty() {
             let rest = points.select(Axis(0), &left);
-            let found = for_batch(rest.view(), monitor, |n| self.project(n, options))?;
+            let found = for_batch(rest.view(), monitor, |k, n| project(left[k], n))?;
             let members = left.into_iter().zip(found);
             members.for_each(|(member, found)| result.take(member, found));
         }
@@ -171,11 +203,36 @@ impl ExclusionPolytope {
         monitor: &mut Monitor<'_>,
     ) -> Result<Vec<bool>> {
         if self.listed_for(points.len_of(Axis(0)), monitor)?.is_none() {
-            return for_batch(points, monitor, |n| self.contains(n, tolerance));
+            return for_batch(points, monitor, |_, n| self.contains(n, tolerance));
         }
         check_tolerance(tolerance)?;
-        let found = self.project_batch(points, &ProjectionOptions::default(), monitor)?;
+        let found = self.project_batch(points, &ProjectionOptions::default(), None, monitor)?;
         Ok(found.distances.iter().map(|&d| d <= tolerance).collect())
+    }
+
+    fn check_start(&self, start: Start<'_>, count: usize) -> Result<()> {
+        let (given, own) = (&start.earlier.oracle, &self.oracle);
+        let same = given.sector == own.sector
+            && given.domain == own.domain
+            && given.weights.as_slice() == own.weights.as_slice();
+        if !same {
+            let expected = format!("a projection on this polytope, {own:?}");
+            return Err(Error::argument(
+                "start",
+                format!("one on {given:?}"),
+                expected,
+            ));
+        }
+        let length = start.earlier.len();
+        if start
+            .member
+            .map_or(length != count, |member| member >= length)
+        {
+            let expected = format!("one of a single point, or of {count} as given now");
+            let given = format!("a projection of {length} points");
+            return Err(Error::argument("start", given, expected));
+        }
+        Ok(())
     }
 
     fn project_listed(
@@ -280,14 +337,14 @@ fn report(monitor: &mut Monitor<'_>, done: usize, total: usize) -> Result<()> {
 pub fn for_batch<T: Send>(
     batch: ArrayView3<'_, f64>,
     monitor: &mut Monitor<'_>,
-    work: impl Fn(ArrayView2<'_, f64>) -> Result<T> + Sync,
+    work: impl Fn(usize, ArrayView2<'_, f64>) -> Result<T> + Sync,
 ) -> Result<Vec<T>> {
     let total = batch.len_of(Axis(0));
     let mut results = Vec::with_capacity(total);
     for part in batch.axis_chunks_iter(Axis(0), MEMBERS) {
         report(monitor, results.len(), total)?;
-        let members: Vec<_> = part.outer_iter().collect();
-        let done: Result<Vec<T>> = members.into_par_iter().map(&work).collect();
+        let members: Vec<_> = (results.len()..).zip(part.outer_iter()).collect();
+        let done: Result<Vec<T>> = members.into_par_iter().map(|(k, n)| work(k, n)).collect();
         results.extend(done?);
     }
     Ok(results)

@@ -32,7 +32,7 @@ mod stretch;
 #[cfg(test)]
 mod tests;
 
-pub use batch::{Projections, for_batch};
+pub use batch::{Projections, Start, for_batch};
 pub use ensemble::{Ensemble, Term};
 pub use exact::{DEFAULT_LIMIT, GeneratingVertex, Inequality, LineUps};
 pub use oracle::Domain;
@@ -109,7 +109,7 @@ impl ExclusionPolytope {
         options: &ProjectionOptions,
     ) -> Result<Projection> {
         self.check_occupations(occupations)?;
-        projection::project(&self.oracle, occupations, options)
+        projection::project(&self.oracle, occupations, options, None)
     }
 
     /// Euclidean distance to the polytope.

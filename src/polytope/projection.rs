@@ -147,11 +147,13 @@ pub(super) fn is_within(
     Ok(found.run()?.length <= left.sqrt())
 }
 
-/// Projects validated occupations.
+/// Projects validated occupations, starting from the vertices that an earlier projection on the
+/// same polytope mixed.
 pub(super) fn project(
     oracle: &Oracle,
     occupations: ArrayView2<'_, f64>,
     options: &ProjectionOptions,
+    start: Option<&Projection>,
 ) -> Result<Projection> {
     options.check()?;
     let sorting = Sorting::new(occupations);
@@ -159,7 +161,8 @@ pub(super) fn project(
     let shifts = remove_excess(oracle, &mut target);
     let modes = oracle.shape().1;
     let excess = shifts.iter().map(|s| s * s).sum::<f64>() * modes as f64;
-    let found = Search::new(oracle, &target, *options, EarlyStop::NONE, Vec::new())?.run()?;
+    let start = start.map_or(Vec::new(), |earlier| earlier.certificate.atoms.clone());
+    let found = Search::new(oracle, &target, *options, EarlyStop::NONE, start)?.run()?;
 
     let mut normal = found.normal.clone();
     for (component, shift) in normal.chunks_mut(modes).zip(&shifts) {

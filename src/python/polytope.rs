@@ -4,7 +4,7 @@ use super::door::{enter, enter_monitored, raise};
 use super::sector::Sector;
 use crate::error::Error;
 use crate::polytope as core;
-use crate::polytope::{Domain, ProjectionOptions, for_batch};
+use crate::polytope::{Domain, ProjectionOptions, Start, for_batch};
 use crate::weights::Weights;
 use numpy::ndarray::{Array1, Array2, Array3, Array4, Axis};
 use numpy::{
@@ -146,7 +146,7 @@ impl ExclusionPolytope {
     ) -> PyResult<Batch<'py>> {
         let potentials = potentials.as_array();
         let found = enter_monitored(py, None, |monitor| {
-            for_batch(potentials, monitor, |h| self.inner.support(h))
+            for_batch(potentials, monitor, |_, h| self.inner.support(h))
         })?;
         let values: Array1<f64> = found.iter().map(|(value, _)| *value).collect();
         let minimisers = stacked(found.iter().map(|(_, n)| n), self.inner.shape());
@@ -167,16 +167,24 @@ impl ExclusionPolytope {
         Ok(inside.into_pyarray(py))
     }
 
-    /// The nearest points.
+    /// The nearest points, from an earlier result if there is one.
+    #[pyo3(signature = (occupations, start=None, member=None))]
     fn project(
         &self,
         py: Python<'_>,
         occupations: PyReadonlyArray3<'_, f64>,
+        start: Option<PyRef<'_, Projections>>,
+        member: Option<usize>,
     ) -> PyResult<Projections> {
         let occupations = occupations.as_array();
         let options = ProjectionOptions::default();
+        let start = start.as_ref().map(|start| Start {
+            earlier: &start.inner,
+            member,
+        });
         let inner = enter_monitored(py, None, |monitor| {
-            self.inner.project_batch(occupations, &options, monitor)
+            self.inner
+                .project_batch(occupations, &options, start, monitor)
         })?;
         Ok(Projections { inner })
     }
@@ -189,7 +197,7 @@ impl ExclusionPolytope {
     ) -> PyResult<StretchParts<'py>> {
         let occupations = occupations.as_array();
         let found = enter_monitored(py, None, |monitor| {
-            for_batch(occupations, monitor, |n| self.inner.stretch(n))
+            for_batch(occupations, monitor, |_, n| self.inner.stretch(n))
         })?;
         let values: Array1<f64> = found.iter().map(|s| s.value).collect();
         let lower: Array1<f64> = found.iter().map(|s| s.lower).collect();

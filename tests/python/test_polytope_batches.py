@@ -200,3 +200,26 @@ def test_an_empty_batch() -> None:
     found = polytope.project(occupations=np.empty((0, 6)))
     assert found.occupations.shape == (0, 6)
     assert polytope.contains(occupations=np.empty((0, 6))).shape == (0,)
+
+
+def test_projections_start_from_earlier_ones() -> None:
+    weights = np.linspace(2.0, 1.0, 40)
+    polytope = fh.ExclusionPolytope(fh.Fermions(12, 6), weights / weights.sum())
+    steps = (np.arange(12) - 5.5) / np.array([[0.5], [0.52], [0.6]])
+    points = 1.0 / (1.0 + np.exp(steps))
+    cold = polytope.project(occupations=points)
+    single = polytope.project(occupations=points[0])
+    for start in (cold, single, cold[1], pickle.loads(pickle.dumps(cold))):
+        warm = polytope.project(occupations=points, start=start)
+        assert_allclose(warm.distance, cold.distance, rtol=0.0, atol=1e-10)
+        assert_allclose(warm.occupations, cold.occupations, rtol=0.0, atol=1e-6)
+        assert warm[2].ensemble.verify(warm[2].occupations)
+    again = polytope.project(occupations=points[2], start=cold[1])
+    assert_allclose(again.distance, cold[2].distance, rtol=0.0, atol=1e-10)
+    other = fh.ExclusionPolytope(fh.Fermions(12, 6), [0.6, 0.4])
+    with pytest.raises(fh.errors.ArgumentError, match="this polytope"):
+        other.project(occupations=points, start=cold)
+    with pytest.raises(fh.errors.ArgumentError, match="projection of 3 points"):
+        polytope.project(occupations=points[:2], start=cold)
+    with pytest.raises(fh.errors.ArgumentTypeError, match="`start`"):
+        polytope.project(occupations=points, start=points)  # type: ignore[arg-type]

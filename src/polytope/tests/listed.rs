@@ -54,7 +54,7 @@ fn the_list_and_the_oracle_find_the_same_points() {
         };
         let batch = points(&mut generator, &polytope, 40);
         let found = known
-            .project_batch(batch.view(), &options, &mut silent)
+            .project_batch(batch.view(), &options, None, &mut silent)
             .unwrap();
         let far = found.distances.iter().filter(|&&distance| distance > 3.0);
         assert!(found.searched() <= far.count(), "{polytope:?}");
@@ -86,4 +86,57 @@ fn the_list_and_the_oracle_find_the_same_points() {
             );
         }
     }
+}
+
+#[test]
+fn earlier_projections_save_oracle_calls_and_change_nothing_else() {
+    let sector = Sector::fermions(12, 6).unwrap();
+    let raw: Vec<f64> = (0..60).map(|k| 2.0 - k as f64 / 60.0).collect();
+    let sum: f64 = raw.iter().sum();
+    let weights = Weights::new(&raw.iter().map(|w| w / sum).collect::<Vec<_>>()).unwrap();
+    let polytope = ExclusionPolytope::new(sector, weights, Domain::Spinless).unwrap();
+    let point = |x: f64| {
+        let occupation = |k: usize| 1.0 / (1.0 + ((k as f64 - 5.5) / (0.6 + x)).exp());
+        Array3::from_shape_fn((1, 1, 12), |(_, _, k)| occupation(k))
+    };
+    let options = ProjectionOptions::default();
+    let first = polytope
+        .project_batch(point(0.0).view(), &options, None, &mut silent)
+        .unwrap();
+    let start = Start {
+        earlier: &first,
+        member: None,
+    };
+    for x in [0.0, 1e-3, -0.05] {
+        let run = |start| {
+            let found = polytope.project_batch(point(x).view(), &options, start, &mut silent);
+            let found = found.unwrap();
+            let calls = found.searched[0].1.oracle_calls;
+            (found, calls)
+        };
+        let ((cold, cold_calls), (warm, warm_calls)) = (run(None), run(Some(start)));
+        assert!(
+            warm_calls < cold_calls,
+            "{x}: {warm_calls} against {cold_calls}"
+        );
+        assert!(
+            (&warm.occupations - &cold.occupations)
+                .iter()
+                .all(|d| d.abs() < 1e-6)
+        );
+        assert!((warm.distances[0] - cold.distances[0]).abs() < 1e-10);
+    }
+    let other = ExclusionPolytope::new(sector, Weights::new(&[1.0]).unwrap(), Domain::Spinless);
+    let refused = |polytope: &ExclusionPolytope, points: Array3<f64>, member| {
+        let start = Start {
+            earlier: &first,
+            member,
+        };
+        polytope.project_batch(points.view(), &options, Some(start), &mut silent)
+    };
+    assert!(refused(&other.unwrap(), point(0.0), None).is_err());
+    let two = Array3::from_elem((2, 1, 12), 0.5);
+    assert!(refused(&polytope, two.clone(), None).is_err());
+    assert!(refused(&polytope, two.clone(), Some(1)).is_err());
+    assert!(refused(&polytope, two, Some(0)).is_ok());
 }
