@@ -52,7 +52,7 @@ pub(super) struct BlockLanczos<'a, T: Scalar> {
     pub products: usize,
     /// The latest report.
     pub latest: Progress,
-    /// Residual norm to be reached: overlaps in the basis must not spoil it.
+    /// Relative residual norm to be reached: overlaps in the basis must not spoil it.
     accuracy: f64,
     generator: ChaCha8Rng,
 }
@@ -185,9 +185,10 @@ impl<'a, T: Scalar> BlockLanczos<'a, T> {
         let (rows, active, locked) = (self.rows(), self.active, self.locked);
         self.multiply(rows - active..rows, rows, monitor)?;
         let purge = Purge {
-            first_expected: locked + self.first_coupled,
+            first_expected: if locked > 0 { 0 } else { self.first_coupled },
             noise: 16.0 * f64::EPSILON * self.norm(),
-            overlap: 0.05 * self.accuracy / self.norm().max(self.accuracy),
+            // levels may be a hundred times smaller than the norm that multiplies an overlap
+            overlap: 5e-4 * self.accuracy,
         };
         let mut generator = self.generator.clone();
         let (basis, image) = self.split(rows, active);

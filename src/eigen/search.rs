@@ -19,6 +19,8 @@ const PATIENCE: usize = 12;
 /// Krylov rows and bytes beyond which they are not doubled.
 const MOST_USUAL_ROWS: usize = 96;
 const MOST_USUAL_BYTES: usize = 64 << 20;
+/// Rows that the search for missed levels takes beside those found.
+const SEARCH_ROWS: usize = 3;
 /// Rows in a block. Single vectors need by far the fewest products (on the half-filled ring of
 /// 12 sites 136, against 291 in pairs and 809 in fours); partners in multiplets that they do
 /// not see are found by the rounds that follow the level count.
@@ -120,7 +122,8 @@ impl<'a, 'b, T: Scalar> Search<'a, 'b, T> {
             });
         }
         let spare = most_rows - (r + 2) - 2 * width;
-        let rows = (krylov_rows(USUAL_ROWS, r, width) + width)
+        // locked levels and the search for missed ones included: growing later would move it all
+        let rows = (krylov_rows(USUAL_ROWS, r, width) + width + r + SEARCH_ROWS)
             .min(most_rows)
             .min(n + width);
         Ok(Search {
@@ -279,8 +282,7 @@ impl<'a, 'b, T: Scalar> Search<'a, 'b, T> {
             unreachable!("collecting follows a finished assessment");
         };
         let kept = if next {
-            // the search for missed levels takes three more rows
-            let limit = (self.most_rows - 3).max(found + 1);
+            let limit = (self.most_rows - SEARCH_ROWS).max(found + 1);
             nearly_converged(&levels, found).min(limit)
         } else {
             found
