@@ -87,7 +87,11 @@ bench-large: env
 
 # a wheel for others: OpenBLAS is bundled
 wheel: env
-	maturin build --release --out dist
+	# bundling changes the built library: a folder of its own, and built anew each time
+	cargo clean --quiet --release --package fockhull --target-dir target/wheel
+	rm -f dist/*.whl
+	maturin build --release --target-dir target/wheel --out dist
+	python tools/bundled_licences.py dist/*manylinux*.whl
 
 clean:
 	rm -rf target dist docs/_build $(VENV)
