@@ -12,18 +12,38 @@ pub struct Recurrence<'a, T> {
     /// What is subtracted from the operator.
     pub shift: f64,
     /// What is subtracted from the product.
-    pub subtrahend: Subtrahend<'a, T>,
+    pub subtrahend: Subtrahend<ArrayView2<'a, T>>,
 }
 
-/// What a step of a recurrence subtracts.
+/// What a step of a recurrence subtracts, with B for a block, or a part of one.
 #[derive(Debug, Clone, Copy)]
-pub enum Subtrahend<'a, T> {
+pub enum Subtrahend<B> {
     /// Nothing.
     Nothing,
     /// What the result overwrites.
     Overwritten,
     /// Another block.
-    Block(ArrayView2<'a, T>),
+    Block(B),
+}
+
+impl<B> Subtrahend<B> {
+    /// The same with the block borrowed.
+    pub fn as_ref(&self) -> Subtrahend<&B> {
+        match self {
+            Subtrahend::Nothing => Subtrahend::Nothing,
+            Subtrahend::Overwritten => Subtrahend::Overwritten,
+            Subtrahend::Block(block) => Subtrahend::Block(block),
+        }
+    }
+
+    /// The same with a part of the block.
+    pub fn map<C>(self, part: impl FnOnce(B) -> C) -> Subtrahend<C> {
+        match self {
+            Subtrahend::Nothing => Subtrahend::Nothing,
+            Subtrahend::Overwritten => Subtrahend::Overwritten,
+            Subtrahend::Block(block) => Subtrahend::Block(part(block)),
+        }
+    }
 }
 
 /// A Hermitian linear map, applied to blocks of vectors.

@@ -8,13 +8,13 @@ use super::density_coupling::DensityCoupling;
 use super::interaction::Interaction;
 use super::modes::ModeOperator;
 use super::stored::RowSink;
-use super::strings::{Diagonal, RowSubtrahend, StringMatrix};
+use super::strings::{Diagonal, StringMatrix};
 use super::terms::ModeTerms;
 use super::tile::with_tile_width;
 use super::walker::ModeSpace;
 use crate::dense::{Conjugate, Threads, multiply};
 use crate::error::Result;
-use crate::linear_operator::{Recurrence, Subtrahend};
+use crate::linear_operator::Recurrence;
 use crate::memory;
 use crate::scalar::Scalar;
 use ndarray::{Array1, ArrayView2, ArrayView3, ArrayViewMut2, Axis, s};
@@ -98,14 +98,9 @@ impl<T: Scalar> SpinHalfOperator<T> {
             let (Some(vector), Some(result)) = (vector.to_slice(), result.as_slice_mut()) else {
                 continue;
             };
-            let subtrahend = match step.subtrahend {
-                Subtrahend::Nothing => RowSubtrahend::Nothing,
-                Subtrahend::Overwritten => RowSubtrahend::Overwritten,
-                Subtrahend::Block(other) => match other.slice_move(s![k, ..]).to_slice() {
-                    Some(other) => RowSubtrahend::Vector(other),
-                    None => continue,
-                },
-            };
+            let subtrahend = step
+                .subtrahend
+                .map(|block| block.slice_move(s![k, ..]).to_slice().unwrap_or_default());
             with_tile_width!(up, W => {
                 let result = (&mut *result, subtrahend);
                 self.down.apply_to_rows::<W>(diagonal, vector, result, buffers)

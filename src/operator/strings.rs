@@ -9,8 +9,9 @@ use super::density_coupling::DensityCoupling;
 use super::modes::ModeOperator;
 use super::stored::SparseMatrix;
 use super::tile::with_row_product;
-use super::transpose::{LINE, Subtracted, transpose_in, transpose_line_out};
+use super::transpose::{LINE, transpose_in, transpose_line_out};
 use crate::error::Result;
+use crate::linear_operator::Subtrahend;
 use crate::memory;
 use crate::scalar::Scalar;
 use ndarray::{Array2, ArrayViewMut2, Axis};
@@ -61,7 +62,7 @@ impl<T: Scalar> StringMatrix<T> {
         &self,
         diagonal: Diagonal<'_>,
         vector: &[T],
-        (result, subtrahend): (&mut [T], RowSubtrahend<'_, T>),
+        (result, subtrahend): (&mut [T], Subtrahend<&[T]>),
         buffers: &Buffers<T>,
     ) {
         let width = self.sparse.rows();
@@ -70,12 +71,6 @@ impl<T: Scalar> StringMatrix<T> {
         let tiles = tiles.zip(vector.par_chunks(W * width));
         tiles.for_each(|((tile, result), vector)| {
             let vectors: Vec<&[T]> = vector.chunks(width).collect();
-            let others: Vec<&[T]> = match subtrahend {
-                RowSubtrahend::Vector(other) => {
-                    other[tile * W * width..].chunks(width).take(W).collect()
-                }
-                _ => Vec::new(),
-            };
             let coupling = diagonal.coupling;
             buffers.with(W * width, |source| {
                 arch.dispatch(RowTile::<T, W> {
@@ -85,11 +80,8 @@ impl<T: Scalar> StringMatrix<T> {
                     factor: diagonal.factor,
                     vectors,
                     rows: result.chunks_mut(width).collect(),
-                    subtracted: match subtrahend {
-                        RowSubtrahend::Nothing => Subtracted::Nothing,
-                        RowSubtrahend::Overwritten => Subtracted::Overwritten,
-                        RowSubtrahend::Vector(_) => Subtracted::Vectors(&others),
-                    },
+                    subtrahend: subtrahend
+                        .map(|other| other[tile * W * width..].chunks(width).take(W).collect()),
                     source: source.as_chunks_mut().0,
                 });
             });
@@ -130,15 +122,6 @@ pub struct Diagonal<'a> {
     pub factor: f64,
 }
 
-/// What the pass over rows subtracts.
-#[derive(Clone, Copy)]
-pub enum RowSubtrahend<'a, T> {
-    Nothing,
-    /// What it overwrites.
-    Overwritten,
-    Vector(&'a [T]),
-}
-
 /// A tile of rows: the down part and the density coupling. (A struct, not a closure: only then
 /// the work is compiled for the instruction set found at run time.)
 struct RowTile<'a, T, const W: usize> {
@@ -148,7 +131,7 @@ struct RowTile<'a, T, const W: usize> {
     factor: f64,
     vectors: Vec<&'a [T]>,
     rows: Vec<&'a mut [T]>,
-    subtracted: Subtracted<'a, T>,
+    subtrahend: Subtrahend<Vec<&'a [T]>>,
     source: &'a mut [[T; W]],
 }
 
@@ -159,6 +142,7 @@ impl<T: Scalar, const W: usize> NullaryFnOnce for RowTile<'_, T, W> {
     fn call(mut self) {
         transpose_in(&self.vectors, self.source);
         let source = &*self.source;
+        let subtrahend = self.subtrahend.as_ref().map(Vec::as_slice);
         let mut line = [[T::zero(); W]; LINE];
         for start in (0..source.len()).step_by(LINE) {
             let line = &mut line[..LINE.min(source.len() - start)];
@@ -174,7 +158,7 @@ impl<T: Scalar, const W: usize> NullaryFnOnce for RowTile<'_, T, W> {
                 };
                 *target = scaled(sum, self.factor);
             }
-            transpose_line_out(line, &mut self.rows, self.subtracted, start);
+            transpose_line_out(line, &mut self.rows, subtrahend, start);
         }
     }
 }

@@ -1,5 +1,6 @@
 //! Between vectors and tiles: a tile holds the same component of several vectors side by side.
 
+use crate::linear_operator::Subtrahend;
 use crate::scalar::Scalar;
 
 /// Columns that are transposed together: a cache line of each row.
@@ -24,22 +25,12 @@ pub fn transpose_in<T: Scalar, const W: usize>(vectors: &[&[T]], tile: &mut [[T;
     }
 }
 
-/// What is subtracted on the way out.
-#[derive(Clone, Copy)]
-pub enum Subtracted<'a, T> {
-    Nothing,
-    /// What is overwritten.
-    Overwritten,
-    /// A vector for each of those written.
-    Vectors(&'a [&'a [T]]),
-}
-
 /// vectors\[place\]\[start + c\] = line\[c\]\[place\] - what is subtracted, at most [`LINE`] columns
 #[inline(always)]
 pub fn transpose_line_out<T: Scalar, const W: usize>(
     line: &[[T; W]],
     vectors: &mut [&mut [T]],
-    subtracted: Subtracted<'_, T>,
+    subtracted: Subtrahend<&[&[T]]>,
     start: usize,
 ) {
     for (group, vectors) in vectors.chunks_mut(SIDE).enumerate() {
@@ -50,9 +41,9 @@ pub fn transpose_line_out<T: Scalar, const W: usize>(
         for (vector, place) in vectors.iter_mut().zip(first..) {
             for (c, (x, components)) in vector[start..].iter_mut().zip(line).enumerate() {
                 let less = match subtracted {
-                    Subtracted::Nothing => T::zero(),
-                    Subtracted::Overwritten => *x,
-                    Subtracted::Vectors(others) => others[place][start + c],
+                    Subtrahend::Nothing => T::zero(),
+                    Subtrahend::Overwritten => *x,
+                    Subtrahend::Block(others) => others[place][start + c],
                 };
                 *x = components[place] - less;
             }
@@ -66,7 +57,8 @@ const SIDE: usize = 4;
 /// Transposition of real numbers in registers; the compiler does not find it by itself.
 #[cfg(target_arch = "x86_64")]
 mod registers {
-    use super::{LINE, SIDE, Subtracted};
+    use super::{LINE, SIDE};
+    use crate::linear_operator::Subtrahend;
     use crate::scalar::Scalar;
     use pulp::x86::V3;
     use std::arch::x86_64::__m256d;
@@ -131,7 +123,7 @@ mod registers {
         line: &[[T; W]],
         (first, start): (usize, usize),
         vectors: &mut [&mut [T]],
-        subtracted: Subtracted<'_, T>,
+        subtracted: Subtrahend<&[&[T]]>,
     ) -> bool {
         let (Some(simd), [a, b, c, d]) = (V3::try_new(), vectors) else {
             return false;
@@ -163,9 +155,9 @@ mod registers {
             for k in 0..SIDE {
                 let place = &mut parts[k].as_chunks_mut::<SIDE>().0[half];
                 let less = match subtracted {
-                    Subtracted::Nothing => None,
-                    Subtracted::Overwritten => Some(*place),
-                    Subtracted::Vectors(others) => real_part(others[first + k], start)
+                    Subtrahend::Nothing => None,
+                    Subtrahend::Overwritten => Some(*place),
+                    Subtrahend::Block(others) => real_part(others[first + k], start)
                         .map(|part| part.as_chunks::<SIDE>().0[half]),
                 };
                 *place = pulp::cast(match less {
@@ -191,7 +183,7 @@ mod registers {
 /// No registers of four numbers are known here.
 #[cfg(not(target_arch = "x86_64"))]
 mod registers {
-    use super::Subtracted;
+    use crate::linear_operator::Subtrahend;
 
     pub fn transpose_in<T, const W: usize>(
         _: &[&[T]],
@@ -205,7 +197,7 @@ mod registers {
         _: &[[T; W]],
         _: (usize, usize),
         _: &mut [&mut [T]],
-        _: Subtracted<'_, T>,
+        _: Subtrahend<&[&[T]]>,
     ) -> bool {
         false
     }
@@ -228,7 +220,7 @@ mod tests {
                 assert_eq!(tile[c][k], x);
             }
         }
-        let out = |subtracted: Subtracted<'_, T>| {
+        let out = |subtracted: Subtrahend<&[&[T]]>| {
             let mut back = vec![T::one(); numbers.len()];
             let mut rows: Vec<&mut [T]> = back.chunks_mut(length).collect();
             for (block, line) in tile.chunks(LINE).enumerate() {
@@ -236,11 +228,11 @@ mod tests {
             }
             back
         };
-        assert_eq!(out(Subtracted::Nothing), numbers);
+        assert_eq!(out(Subtrahend::Nothing), numbers);
         let less_one: Vec<T> = numbers.iter().map(|&x| x - T::one()).collect();
-        assert_eq!(out(Subtracted::Overwritten), less_one);
+        assert_eq!(out(Subtrahend::Overwritten), less_one);
         let zeros = vec![T::zero(); numbers.len()];
-        assert_eq!(out(Subtracted::Vectors(&vectors)), zeros);
+        assert_eq!(out(Subtrahend::Block(&vectors)), zeros);
     }
 
     #[test]
